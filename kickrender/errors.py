@@ -1,10 +1,10 @@
 """Every fault kickrender reports, as one small tree.
 
-    KickrenderError            exit code 1
-      InputError               exit code 2: the user's data or options are wrong
-      SolveError               a circuit could not be solved
-      MeasurementError         a sound has no such measurement
-      WriteError               a file or folder could not be written
+KickrenderError            exit code 1
+  InputError               exit code 2: the user's data or options are wrong
+  SolveError               a circuit could not be solved
+  MeasurementError         a sound has no such measurement
+  WriteError               a file or folder could not be written
 """
 
 from __future__ import annotations
@@ -88,7 +88,10 @@ class SolveError(KickrenderError):
         super().__init__(f"{reason} ({', '.join(where)}). {advice}")
 
     def __reduce__(self) -> tuple[object, ...]:
-        return (_solve_error, (self.reason, self.circuit, self.advice, self.time_s, self.step_s, self.net, self.residual))
+        return (
+            _solve_error,
+            (self.reason, self.circuit, self.advice, self.time_s, self.step_s, self.net, self.residual),
+        )
 
 
 def _solve_error(

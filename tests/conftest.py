@@ -1,0 +1,21 @@
+"""Compile the solver once, before test workers start: two processes that compile at once do the work twice."""
+
+import subprocess
+import sys
+
+import pytest
+
+
+def pytest_configure(config: pytest.Config) -> None:
+    if hasattr(config, "workerinput") or config.option.collectonly:  # a worker: its controller has compiled already
+        return
+    subprocess.run([sys.executable, "-c", WARM_UP], check=True)
+
+
+WARM_UP = """
+import sys
+from kickrender import engine
+if hasattr(engine, "warm_up"):
+    print("making sure that the solver is compiled (once, up to a minute) ...", file=sys.stderr, flush=True)
+    engine.warm_up()
+"""
