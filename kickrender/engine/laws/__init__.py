@@ -1,0 +1,32 @@
+"""The table of laws: every part kind's equation file.
+
+`STAMPS` has one row per part kind. `LAWS` lists the nonlinear laws in the order in which their devices lie in
+memory; `evaluate` calls them in that order.
+"""
+
+from __future__ import annotations
+
+from kickrender.engine.compile import kernel
+from kickrender.engine.laws import diode, linear, opamp, transistor
+
+STAMPS = {
+    "resistor": linear.stamp_resistance,
+    "switch": linear.stamp_resistance,
+    "pot": linear.stamp_pot,
+    "capacitor": linear.stamp_capacitor,
+    "inductor": linear.stamp_inductor,
+    "diode": diode.stamp,
+    "npn": transistor.stamp,
+    "pnp": transistor.stamp,
+    "opamp": opamp.stamp,
+}
+
+LAWS = ("diode", "transistor", "opamp")
+
+
+@kernel
+def evaluate(spans, numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, width):
+    """Outputs and slopes of every device; spans of shape (len(LAWS), 6), the rest as in diode.evaluate."""
+    diode.evaluate(spans[0], numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, width)
+    transistor.evaluate(spans[1], numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, width)
+    opamp.evaluate(spans[2], numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, width)

@@ -1,0 +1,254 @@
+"""The rest state: where the circuit has settled before the strike, f(x) = 0 with every input at its t = 0 level.
+
+Newton's method from all nets at 0 V, its steps shortened where a junction's exponential would run away; if that
+fails, source stepping (all held and input voltages raised from zero); if that fails too, pseudo-transient
+continuation: the circuit's own motion in ever longer implicit steps.
+
+Source: C. T. Kelley and D. E. Keyes, Convergence analysis of pseudo-transient continuation, SIAM Journal on
+Numerical Analysis 35 (1998), for the growth of the pseudo step with the fall of the residual. The shortening of
+junction steps is common practice in circuit analysis.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+
+from kickrender.engine.compile import kernel
+from kickrender.engine.elementary import logarithm
+from kickrender.engine.lanes import FLAT, LONE, load, spread, store
+from kickrender.engine.stepper import assemble, evaluate_devices, residual
+
+SETTLED, NOT_SETTLED = 0, 1
+
+_NEWTON_ITERATIONS = 120
+_SOURCE_STEPS = 200
+_PSEUDO_STEPS = 3000
+_CLOSE_V = 1e-7  # a full Newton step below this is convergence; rounding decides what is below
+_STEEP_ARGUMENT = 20.0  # of an exponential: beyond, it may grow by little more than its logarithm in one step
+_FIRST_PSEUDO_STEP_S = 1e-6
+
+
+@kernel
+def settle(code, hit_numbers, hit_inputs, hit_x, results, worst, work_w, work_f):
+    """Rest states of a batch.
+
+    Parameters
+    ----------
+    code : program.Code.
+    hit_numbers : (hits, code.numbers). hit_inputs : (hits, inputs), voltages at t = 0. [V]
+    hit_x : (hits, code.size), receives the states. [V], [A]
+    results : (hits, 3) int64: SETTLED or NOT_SETTLED, iterations in all, row of the largest residual.
+    worst : (hits,) that residual. [A], or [V/s] in an op-amp's row
+    work_w, work_f : (size, size) and (code.coefficients,); scratch.
+    """
+    size = code.size
+    numbers = np.zeros(code.numbers)
+    vectors = np.zeros(code.vectors + len(FLAT))
+    arguments = np.zeros(code.exponentials + len(FLAT))
+    before = np.zeros(code.exponentials + len(FLAT))
+    exp_slopes = np.zeros(code.exponentials + len(FLAT))
+    exp_values = np.zeros(code.exponentials + len(FLAT))
+    tanhs = np.zeros(code.tanhs + len(FLAT))
+    slopes = np.zeros(code.slopes)
+    rate = np.zeros(code.stride)
+    x = np.zeros(size)
+    dx = np.zeros(size)
+    for hit in range(hit_numbers.shape[0]):
+        x[:] = 0.0
+        iterations = 0
+        level = 1.0  # of the sources
+        state = (numbers, vectors, arguments, before, exp_slopes, exp_values, tanhs, slopes, rate, x, dx)
+        _set_sources(code, hit_numbers[hit], hit_inputs[hit], 1.0, numbers, vectors, work_f)
+        done, count = _newton(code, state, work_w, work_f, 0.0, _NEWTON_ITERATIONS)
+        iterations += count
+        if not done:
+            x[:] = 0.0
+            level, stride = 0.0, 0.1
+            kept = x.copy()
+            for _ in range(_SOURCE_STEPS):
+                trial = min(1.0, level + stride)
+                _set_sources(code, hit_numbers[hit], hit_inputs[hit], trial, numbers, vectors, work_f)
+                done, count = _newton(code, state, work_w, work_f, 0.0, _NEWTON_ITERATIONS)
+                iterations += count
+                if done:
+                    level = trial
+                    kept[:] = x
+                    stride *= 1.5
+                    if level == 1.0:
+                        break
+                else:
+                    x[:] = kept
+                    stride *= 0.25
+                    if stride < 1e-4:
+                        break
+            done = done and level == 1.0
+        if not done:
+            x[:] = 0.0
+            _set_sources(code, hit_numbers[hit], hit_inputs[hit], 1.0, numbers, vectors, work_f)
+            pseudo_step = _FIRST_PSEUDO_STEP_S
+            for index in range(_PSEUDO_STEPS):
+                done, count = _newton(code, state, work_w, work_f, 1.0 / pseudo_step, 1)
+                iterations += count
+                longest = 0.0
+                for row in range(size):
+                    longest = max(longest, abs(dx[row]))
+                if not longest < np.inf:
+                    break
+                pseudo_step *= 0.5 if longest > 2.0 else (2.0 if longest < 0.5 else 1.0)
+                if longest < 1e-3 and index % 8 == 7:
+                    done, count = _newton(code, state, work_w, work_f, 0.0, _NEWTON_ITERATIONS)
+                    iterations += count
+                    if done:
+                        break
+        hit_x[hit] = x
+        results[hit, 0] = SETTLED if done else NOT_SETTLED
+        results[hit, 1] = iterations
+        _evaluate(code, state, work_f)
+        results[hit, 2] = 0
+        for row in range(size):
+            if not abs(vectors[code.v_y + row]) <= abs(vectors[code.v_y + results[hit, 2]]):
+                results[hit, 2] = row
+        worst[hit] = vectors[code.v_y + results[hit, 2]]
+
+
+@kernel
+def _set_sources(code, hit_numbers, inputs, level, numbers, vectors, coefficients):
+    """Load one hit's numbers with all its sources scaled by `level`; no capacitor current, no factors."""
+    numbers[:] = hit_numbers
+    vectors[:] = 0.0
+    coefficients[:] = 0.0
+    coefficients[: code.g] = hit_numbers[: code.g]
+    coefficients[code.g] = 1.0
+    coefficients[code.g + 1] = -1.0
+    for row in range(code.size):
+        numbers[code.n_b + row] *= level
+    for m in range(code.inputs):
+        vectors[code.stride + m] = inputs[m] * level
+    for row in range(code.known - code.inputs):
+        vectors[code.stride + code.inputs + row] = hit_numbers[code.n_held + row] * level
+
+
+@kernel
+def _evaluate(code, state, coefficients):
+    """f(x) into section y of the vectors, and every device's slopes."""
+    numbers, vectors, arguments, before, exp_slopes, exp_values, tanhs, slopes, rate, x, dx = state
+    for row in range(code.size):
+        vectors[row] = x[row]
+    evaluate_devices(code, numbers, vectors, arguments, exp_slopes, exp_values, tanhs, slopes, LONE)
+    residual(code, numbers, coefficients, vectors, rate, spread(0.0, LONE), LONE)
+
+
+@kernel
+def _newton(code, state, matrix, coefficients, per_pseudo_step, most):
+    """Up to `most` damped Newton steps on C x' = f(x) with x' = dx per_pseudo_step; whether it settled, and steps.
+
+    `coefficients` has a zero w section, so that section y of the vectors is f(x) itself.
+    """
+    numbers, vectors, arguments, before, exp_slopes, exp_values, tanhs, slopes, rate, x, dx = state
+    size = code.size
+    first = code.g + 2 + code.cu + code.ch
+    last = np.inf
+    for iteration in range(most):
+        _evaluate(code, state, coefficients)
+        for e in range(code.exponentials):
+            before[e] = arguments[e]
+        for p in range(code.ch):
+            # assemble() divides by gamma; a constant factor of the pseudo step does not matter
+            coefficients[code.g + 2 + code.cu + p] = numbers[code.n_c + p] * per_pseudo_step
+        assemble(code, coefficients, slopes, LONE)
+        matrix[:] = 0.0
+        for row in range(size):
+            dx[row] = vectors[code.v_y + row]
+            for e in range(code.w_start[row], code.w_start[row + 1]):
+                matrix[row, code.w_column[e]] = coefficients[first + e]
+        for e in range(code.w):
+            coefficients[first + e] = 0.0
+        for p in range(code.ch):
+            coefficients[code.g + 2 + code.cu + p] = 0.0
+        if not solve_dense(matrix, dx):
+            dx[0] = np.nan
+            return False, iteration + 1
+        # shorten the step where an exponential would run away
+        share = 1.0
+        for e in range(code.exponentials):
+            per_volt = numbers[code.n_exponentials + e]
+            plus, minus = code.exp_plus[e], code.exp_minus[e]
+            change = 0.0
+            if plus < size:
+                change += dx[plus] * per_volt
+            if minus < size:
+                change -= dx[minus] * per_volt
+            after = before[e] + change
+            if after > _STEEP_ARGUMENT and change > 2.0:
+                allowed = 1.0 + _log(change)
+                if before[e] < _STEEP_ARGUMENT:
+                    allowed += _STEEP_ARGUMENT - before[e]
+                share = min(share, allowed / change)
+        longest = 0.0
+        for row in range(size):
+            x[row] += share * dx[row]
+            if not abs(dx[row]) <= longest:
+                longest = abs(dx[row])
+        if not longest < np.inf:
+            return False, iteration + 1
+        if per_pseudo_step == 0.0 and share == 1.0:
+            # settled once steps are tiny and no longer shrink: what is left is rounding
+            if longest < _CLOSE_V and (longest >= 0.5 * last or longest == 0.0):
+                return True, iteration + 1
+            last = longest
+        else:
+            last = np.inf
+    return per_pseudo_step == 0.0 and last < _CLOSE_V, most
+
+
+@kernel
+def _log(value):
+    """ln of one float."""
+    box = np.empty(1)
+    box[0] = value
+    store(box, 0, logarithm(load(box, 0, LONE)))
+    return box[0]
+
+
+@kernel
+def solve_dense(matrix, solution):
+    """Solve matrix x = solution in place by Gaussian elimination, rows scaled, partial pivoting; both overwritten.
+
+    matrix : (n, n). solution : (n,). Returns False if the matrix is singular.
+    """
+    size = solution.size
+    for row in range(size):
+        largest = 0.0
+        for column in range(size):
+            largest = max(largest, abs(matrix[row, column]))
+        if not 0.0 < largest < np.inf:
+            return False
+        scale = 1.0 / largest
+        for column in range(size):
+            matrix[row, column] *= scale
+        solution[row] *= scale
+    for k in range(size):
+        pivot = k
+        for row in range(k + 1, size):
+            if abs(matrix[row, k]) > abs(matrix[pivot, k]):
+                pivot = row
+        if not abs(matrix[pivot, k]) > 1e-30:
+            return False
+        if pivot != k:
+            for column in range(k, size):
+                matrix[k, column], matrix[pivot, column] = matrix[pivot, column], matrix[k, column]
+            solution[k], solution[pivot] = solution[pivot], solution[k]
+        reciprocal = 1.0 / matrix[k, k]
+        for row in range(k + 1, size):
+            if matrix[row, k] != 0.0:
+                factor = matrix[row, k] * reciprocal
+                for column in range(k + 1, size):
+                    matrix[row, column] -= factor * matrix[k, column]
+                solution[row] -= factor * solution[k]
+    for down in range(size):
+        row = size - 1 - down
+        total = solution[row]
+        for column in range(row + 1, size):
+            total -= matrix[row, column] * solution[column]
+        solution[row] = total / matrix[row, row]
+    return True

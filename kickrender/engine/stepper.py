@@ -1,0 +1,507 @@
+"""The one kernel: many hits of one program, side by side in lanes, each with its own time, step and error.
+
+A lane takes the next hit as soon as its own is done. What it computes for a hit depends on that hit's numbers
+alone: every operation works lane by lane, and steps, rejections and break points are the lane's own.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+
+from kickrender.engine import laws
+from kickrender.engine.compile import kernel
+from kickrender.engine.elementary import exponential, hyperbolic_tangent, logarithm, sine_of_turns
+from kickrender.engine.lanes import FLAT, LONE, load, pick_less, spread, store
+from kickrender.engine.method import RODAS5P
+
+STAGES = RODAS5P.c.size
+_A, _C, _D, _C_TIME, _DENSE = RODAS5P.a, RODAS5P.c_rows, RODAS5P.d, RODAS5P.c, RODAS5P.dense
+_GAMMA = RODAS5P.gamma
+_PER_GAMMA = 1.0 / RODAS5P.gamma
+_ORDER = RODAS5P.order
+_HIGHEST_ARGUMENT = 80.0  # of a junction's exponential; continued linearly above
+_TWO_PI = 6.283185307179586
+
+# step control; err is the root mean square of the error estimate in units of the tolerance
+_SAFETY = 0.9
+_LEAST_FACTOR, _MOST_FACTOR = 0.2, 6.0
+_FIRST_STEP_S = 1e-6  # after a break point, where x' jumps; never more than a thousandth of the way to the next
+_LEAST_STEP_S = 1e-15
+_GROWTH_LIMIT = 1e8  # of a multiplier between rows of equal size: half the digits are lost beyond
+
+DONE, STEP_TOO_SMALL, NOT_FINITE, TOO_MANY_STEPS, NO_ROOM, PIVOT_COLLAPSED, RUNNING = 0, 1, 2, 3, 4, 5, 6
+FREE, IDLE = -1, -2  # lanes without a hit
+
+
+@kernel
+def evaluate_devices(code, numbers, vectors, arguments, exp_slopes, exp_values, tanhs, slopes, width):
+    """Outputs (in `vectors`) and slopes of all devices at the voltages in `vectors`; changed in place.
+
+    The exponentials of all junctions and limits are evaluated together, in passes over flat memory.
+    """
+    lanes = len(width)
+    scale, offset = code.n_exponentials, code.n_exponentials + code.exponentials
+    for e in range(code.exponentials):
+        v = load(vectors, code.exp_plus[e] * lanes, width) - load(vectors, code.exp_minus[e] * lanes, width)
+        x = v * load(numbers, (scale + e) * lanes, width) + load(numbers, (offset + e) * lanes, width)
+        store(arguments, e * lanes, x)
+    for start in range(0, code.exponentials * lanes, len(FLAT)):
+        x = load(arguments, start, FLAT)
+        bounded = pick_less(_HIGHEST_ARGUMENT, x, _HIGHEST_ARGUMENT, x)
+        slope = exponential(bounded)
+        store(exp_slopes, start, slope)
+        store(exp_values, start, slope + slope * (x - bounded))
+    per_input, per_own = code.n_tanhs, code.n_tanhs + code.tanhs
+    for k in range(code.tanhs):
+        v = load(vectors, code.tanh_plus[k] * lanes, width) - load(vectors, code.tanh_minus[k] * lanes, width)
+        own = load(vectors, code.tanh_own[k] * lanes, width) * load(numbers, (per_own + k) * lanes, width)
+        store(tanhs, k * lanes, v * load(numbers, (per_input + k) * lanes, width) - own)
+    for start in range(0, code.tanhs * lanes, len(FLAT)):
+        store(tanhs, start, hyperbolic_tangent(load(tanhs, start, FLAT)))
+    laws.evaluate(code.spans, numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, width)
+
+
+@kernel
+def set_inputs(code, time, segment_t, segment_v, segment_slope, sines, vectors, second, width):
+    """Voltages and slopes of the inputs at `time` (a lane vector) and their second derivatives; in place.
+
+    Input m is segment_v + segment_slope (t - segment_t), and a sine on top where code.is_sine:
+    sines holds rows of amplitude, frequency and phase in turns, three per input.
+    """
+    lanes = len(width)
+    for m in range(code.inputs):
+        slope = load(segment_slope, m * lanes, width)
+        v = load(segment_v, m * lanes, width) + slope * (time - load(segment_t, 0, width))
+        bend = spread(0.0, width)
+        if code.is_sine[m]:
+            amplitude = load(sines, 3 * m * lanes, width)
+            frequency = load(sines, (3 * m + 1) * lanes, width)
+            turns = frequency * time + load(sines, (3 * m + 2) * lanes, width)
+            omega = _TWO_PI * frequency
+            sine = amplitude * sine_of_turns(turns)
+            v = v + sine
+            slope = slope + amplitude * omega * sine_of_turns(turns + 0.25)
+            bend = bend - omega * omega * sine
+        store(vectors, (code.stride + m) * lanes, v)
+        store(vectors, (code.v_du + m) * lanes, slope)
+        store(second, m * lanes, bend)
+
+
+@kernel
+def assemble(code, coefficients, slopes, width):
+    """W = C/(gamma h) + G + device slopes into its section of `coefficients`, whose section ch holds C/h."""
+    lanes = len(width)
+    first = code.g + 2 + code.cu + code.ch
+    nothing = spread(0.0, width)
+    for e in range(code.w):
+        store(coefficients, (first + e) * lanes, nothing)
+    for p in range(code.assemble_c.shape[0]):
+        at = (first + code.assemble_c[p, 0]) * lanes
+        c = load(coefficients, (code.g + 2 + code.cu + code.assemble_c[p, 1]) * lanes, width)
+        store(coefficients, at, load(coefficients, at, width) + c * _PER_GAMMA)
+    for p in range(code.assemble_g.shape[0]):
+        at = (first + code.assemble_g[p, 0]) * lanes
+        store(coefficients, at, load(coefficients, at, width) - load(coefficients, code.assemble_g[p, 1] * lanes, width))
+    for p in range(code.assemble_slope.shape[0]):
+        at = (first + code.assemble_slope[p, 0]) * lanes
+        slope = load(slopes, code.assemble_slope[p, 1] * lanes, width) * code.assemble_sign[p]
+        store(coefficients, at, load(coefficients, at, width) + slope)
+
+
+@kernel
+def factorise(code, coefficients, per_pivot, row_size, width):
+    """Eliminate in place: multipliers (negated) below the pivots, U above, reciprocal pivots in `per_pivot`.
+
+    Returns the largest multiplier between rows scaled to equal size, one per lane; not a number if one is not.
+    """
+    lanes = len(width)
+    first = code.g + 2 + code.cu + code.ch
+    for row in range(code.size):
+        size = spread(0.0, width)
+        for e in range(code.w_start[row], code.w_start[row + 1]):
+            w = load(coefficients, (first + e) * lanes, width)
+            w = pick_less(w, 0.0, 0.0 - w, w)
+            size = pick_less(size, w, w, size)
+        store(row_size, row * lanes, size)
+    for k in range(code.size):
+        reciprocal = 1.0 / load(coefficients, (first + code.diagonal[k]) * lanes, width)
+        store(per_pivot, k * lanes, reciprocal)
+        for p in range(code.scale_start[k], code.scale_start[k + 1]):
+            at = (first + code.scale_w[p]) * lanes
+            store(coefficients, at, 0.0 - load(coefficients, at, width) * reciprocal)
+        for p in range(code.update_start[k], code.update_start[k + 1]):
+            at = (first + code.update[p, 0]) * lanes
+            multiplier = load(coefficients, (first + code.update[p, 1]) * lanes, width)
+            w = load(coefficients, (first + code.update[p, 2]) * lanes, width)
+            store(coefficients, at, load(coefficients, at, width) + multiplier * w)
+    worst = spread(0.0, width)
+    for p in range(code.growth.shape[0]):
+        multiplier = load(coefficients, (first + code.growth[p, 0]) * lanes, width)
+        size = load(row_size, code.growth[p, 1] * lanes, width)
+        growth = multiplier * load(row_size, code.growth[p, 2] * lanes, width) / size
+        growth = pick_less(growth, 0.0, 0.0 - growth, growth)
+        worst = pick_less(growth, worst, worst, growth)
+    return worst
+
+
+@kernel
+def time_derivative(code, coefficients, slopes, vectors, second, rate, width):
+    """df/dt at constant x, through the inputs' slopes and second derivatives, into `rate`; shape (size rows,)."""
+    lanes = len(width)
+    nothing = spread(0.0, width)
+    for row in range(code.size):
+        store(rate, row * lanes, nothing)
+    for p in range(code.input_g.shape[0]):
+        at = code.input_g[p, 0] * lanes
+        du = load(vectors, (code.v_du + code.input_g[p, 2]) * lanes, width)
+        store(rate, at, load(rate, at, width) + load(coefficients, code.input_g[p, 1] * lanes, width) * du)
+    for p in range(code.input_slope.shape[0]):
+        at = code.input_slope[p, 0] * lanes
+        du = load(vectors, (code.v_du + code.input_slope[p, 2]) * lanes, width)
+        slope = load(slopes, code.input_slope[p, 1] * lanes, width) * code.input_sign[p]
+        store(rate, at, load(rate, at, width) - slope * du)
+    for p in range(code.input_cu.shape[0]):
+        at = code.input_cu[p, 0] * lanes
+        farad = load(coefficients, (code.g + 2 + code.input_cu[p, 1]) * lanes, width)
+        store(rate, at, load(rate, at, width) + farad * load(second, code.input_cu[p, 2] * lanes, width))
+
+
+@kernel
+def residual(code, numbers, coefficients, vectors, rate, rate_weight, width):
+    """Right-hand side and forward substitution in one dot product per row, into section y of `vectors`."""
+    lanes = len(width)
+    for row in range(code.size):
+        total = load(numbers, (code.n_b + row) * lanes, width) + rate_weight * load(rate, row * lanes, width)
+        for p in range(code.row_start[row], code.row_start[row + 1]):
+            a = load(coefficients, code.row_coefficient[p] * lanes, width)
+            total = total + a * load(vectors, code.row_vector[p] * lanes, width)
+        store(vectors, (code.v_y + row) * lanes, total)
+
+
+@kernel
+def back_substitute(code, coefficients, per_pivot, vectors, solution, start, width):
+    """Solve U k = y; k goes to row `start` and on of `solution`."""
+    lanes = len(width)
+    first = code.g + 2 + code.cu + code.ch
+    for down in range(code.size):
+        row = code.size - 1 - down
+        total = load(vectors, (code.v_y + row) * lanes, width)
+        for p in range(code.back_start[row], code.back_start[row + 1]):
+            w = load(coefficients, (first + code.back_w[p]) * lanes, width)
+            total = total - w * load(solution, (start + code.back_k[p]) * lanes, width)
+        store(solution, (start + row) * lanes, total * load(per_pivot, row * lanes, width))
+
+
+@kernel
+def solve(
+    code,
+    hit_numbers,
+    hit_x,
+    hit_t,
+    hit_h,
+    segment_count,
+    segment_end,
+    segment_v,
+    segment_slope,
+    hit_sines,
+    probes,
+    tolerance,
+    most_steps,
+    piece_t,
+    piece_h,
+    piece_c,
+    results,
+    end_x,
+    end_t,
+    end_h,
+    end_worst,
+    width,
+):
+    """Solve every hit of a batch from its start state to the end of its last segment.
+
+    Parameters
+    ----------
+    code : program.Code.
+    hit_numbers : (hits, code.numbers). hit_x : (hits, code.size), a consistent state at hit_t, shape (hits,) [s];
+        hit_h : (hits,) first step to try, or 0 for the usual one [s].
+    segment_count : (hits,). segment_end : (hits, most) ends of the pieces of the inputs [s]; the last is the end.
+    segment_v, segment_slope : (hits, most, inputs), voltage at the segment's start and slope [V], [V/s].
+        A segment starts where the one before ends, the first at 0.
+    hit_sines : (hits, inputs, 3), see set_inputs.
+    probes : (probes,) positions of the unknowns to keep.
+    tolerance : (2,), absolute [V or A] and relative, of the error of one step.
+    piece_t, piece_h : (hits, room), start and length of every accepted step. [s]
+    piece_c : (hits, room, probes, 5): x, x_new, K_0, K_1, K_2 of method.RODAS5P.dense.
+    results : (hits, 5) int64: status, pieces, steps tried, steps rejected, worst unknown.
+    end_x, end_t, end_h, end_worst : state where each hit ended, whatever its status; the largest error there.
+    All from piece_t on are changed in place.
+
+    Status is DONE, STEP_TOO_SMALL, NOT_FINITE, TOO_MANY_STEPS, NO_ROOM (for more pieces) or PIVOT_COLLAPSED.
+    """
+    lanes = len(width)
+    hits = hit_numbers.shape[0]
+    rows = code.stride * lanes
+    numbers = np.zeros(code.numbers * lanes)
+    coefficients = np.zeros(code.coefficients * lanes)
+    vectors = np.zeros(code.vectors * lanes + len(FLAT))
+    x = np.zeros(rows)
+    x_new = np.zeros(rows)
+    k = np.zeros(STAGES * rows)
+    error = np.zeros(rows)
+    rate = np.zeros(rows)
+    per_pivot = np.zeros(rows)
+    row_size = np.zeros(rows)
+    arguments = np.zeros(code.exponentials * lanes + len(FLAT))
+    exp_slopes = np.zeros(code.exponentials * lanes + len(FLAT))
+    exp_values = np.zeros(code.exponentials * lanes + len(FLAT))
+    tanhs = np.zeros(code.tanhs * lanes + len(FLAT))
+    slopes = np.zeros(code.slopes * lanes)
+    second = np.zeros(code.inputs * lanes)
+    now_t = np.zeros(lanes)  # start of the lane's segment, and the inputs over it
+    now_v = np.zeros(code.inputs * lanes)
+    now_slope = np.zeros(code.inputs * lanes)
+    sines = np.zeros(3 * code.inputs * lanes)
+    dense = np.zeros(5 * probes.size * lanes)
+    t = np.zeros(lanes)
+    h = np.ones(lanes)
+    step = np.ones(lanes)
+    square = np.zeros(lanes)
+    factor = np.zeros(lanes)
+    growth = np.zeros(lanes)
+    hit_of = np.full(lanes, FREE)
+    segment = np.zeros(lanes, np.int64)
+    pieces = np.zeros(lanes, np.int64)
+    tried = np.zeros(lanes, np.int64)
+    rejected = np.zeros(lanes, np.int64)
+    streak = np.zeros(lanes, np.int64)  # rejections in a row
+
+    first_c, first_ch = code.n_c, code.g + 2 + code.cu
+    next_hit = 0
+    for lane in range(lanes):
+        coefficients[code.g * lanes + lane] = 1.0
+        coefficients[(code.g + 1) * lanes + lane] = -1.0
+    running = lanes
+    fresh = True
+    while running > 0:
+        # give free lanes their next hit
+        if fresh:
+            fresh = False
+            for lane in range(lanes):
+                if hit_of[lane] != FREE:
+                    continue
+                if next_hit >= hits:
+                    hit_of[lane] = IDLE  # idle: its arithmetic goes on, its results go nowhere
+                    running -= 1
+                    continue
+                hit = next_hit
+                next_hit += 1
+                hit_of[lane] = hit
+                for row in range(code.numbers):
+                    numbers[row * lanes + lane] = hit_numbers[hit, row]
+                for row in range(code.g):
+                    coefficients[row * lanes + lane] = hit_numbers[hit, row]
+                for row in range(code.cu):
+                    coefficients[(code.g + 2 + row) * lanes + lane] = hit_numbers[hit, code.g + row]
+                for row in range(code.known - code.inputs):
+                    vectors[(code.stride + code.inputs + row) * lanes + lane] = hit_numbers[hit, code.n_held + row]
+                for row in range(code.size):
+                    x[row * lanes + lane] = hit_x[hit, row]
+                for m in range(code.inputs):
+                    for part in range(3):
+                        sines[(3 * m + part) * lanes + lane] = hit_sines[hit, m, part]
+                t[lane] = hit_t[hit]
+                s = 0
+                while s < segment_count[hit] - 1 and segment_end[hit, s] <= t[lane]:
+                    s += 1
+                segment[lane] = s
+                now_t[lane] = segment_end[hit, s - 1] if s > 0 else 0.0
+                for m in range(code.inputs):
+                    now_v[m * lanes + lane] = segment_v[hit, s, m]
+                    now_slope[m * lanes + lane] = segment_slope[hit, s, m]
+                h[lane] = hit_h[hit]
+                if h[lane] == 0.0:
+                    h[lane] = min(_FIRST_STEP_S, 1e-3 * (segment_end[hit, s] - t[lane]))
+                pieces[lane] = 0
+                tried[lane] = 0
+                rejected[lane] = 0
+                streak[lane] = 0
+            if running == 0:
+                break
+
+        # the step each lane will try: to the break point if near, half the way if two steps reach it
+        for lane in range(lanes):
+            step[lane] = h[lane]
+            if hit_of[lane] >= 0:
+                left = segment_end[hit_of[lane], segment[lane]] - t[lane]
+                if h[lane] * 1.000001 >= left:
+                    step[lane] = left
+                elif 2.0 * h[lane] > left:
+                    step[lane] = 0.5 * left
+
+        step_s = load(step, 0, width)
+        start_t = load(t, 0, width)
+        per_step = 1.0 / step_s
+        for p in range(code.ch):
+            store(
+                coefficients, (first_ch + p) * lanes, load(numbers, (first_c + p) * lanes, width) * per_step
+            )
+        for stage in range(STAGES):
+            if stage == 0:
+                for p in range(0, code.size * lanes, len(FLAT)):
+                    store(vectors, p, load(x, p, FLAT))
+                    store(vectors, code.v_zc * lanes + p, spread(0.0, FLAT))
+            elif stage < 6:
+                for p in range(0, code.size * lanes, len(FLAT)):
+                    k_j = load(k, p, FLAT)
+                    v = load(x, p, FLAT) + _A[stage, 0] * k_j
+                    zc = _C[stage, 0] * k_j
+                    for j in range(1, stage):
+                        k_j = load(k, j * rows + p, FLAT)
+                        v = v + _A[stage, j] * k_j
+                        zc = zc + _C[stage, j] * k_j
+                    store(vectors, p, v)
+                    store(vectors, code.v_zc * lanes + p, zc)
+            else:
+                for p in range(0, code.size * lanes, len(FLAT)):
+                    zc = _C[stage, 0] * load(k, p, FLAT)
+                    for j in range(1, stage):
+                        zc = zc + _C[stage, j] * load(k, j * rows + p, FLAT)
+                    store(vectors, p, load(vectors, p, FLAT) + load(k, (stage - 1) * rows + p, FLAT))
+                    store(vectors, code.v_zc * lanes + p, zc)
+            set_inputs(
+                code, start_t + _C_TIME[stage] * step_s, now_t, now_v, now_slope, sines, vectors, second, width
+            )
+            evaluate_devices(code, numbers, vectors, arguments, exp_slopes, exp_values, tanhs, slopes, width)
+            if stage == 0:
+                assemble(code, coefficients, slopes, width)
+                store(growth, 0, factorise(code, coefficients, per_pivot, row_size, width))
+                time_derivative(code, coefficients, slopes, vectors, second, rate, width)
+            residual(code, numbers, coefficients, vectors, rate, _D[stage] * step_s, width)
+            back_substitute(code, coefficients, per_pivot, vectors, k, stage * code.stride, width)
+
+        # error in units of the tolerance
+        for p in range(0, code.size * lanes, len(FLAT)):
+            last = load(k, (STAGES - 1) * rows + p, FLAT)
+            old = load(x, p, FLAT)
+            new = load(vectors, p, FLAT) + last
+            store(x_new, p, new)
+            size_old = pick_less(old, 0.0, 0.0 - old, old)
+            size_new = pick_less(new, 0.0, 0.0 - new, new)
+            size = pick_less(size_old, size_new, size_new, size_old)
+            store(error, p, last / (tolerance[0] + tolerance[1] * size))
+        total = spread(0.0, width)
+        for row in range(code.size):
+            e = load(error, row * lanes, width)
+            total = total + e * e
+        total = total * (1.0 / code.size)
+        store(square, 0, total)
+        bounded = pick_less(total, 1e-12, 1e-12, total)
+        store(factor, 0, _SAFETY * exponential(logarithm(bounded) * (-0.5 / _ORDER)))
+        for position in range(probes.size):
+            row = probes[position] * lanes
+            d0 = spread(0.0, width)
+            d1 = spread(0.0, width)
+            d2 = spread(0.0, width)
+            for j in range(STAGES):
+                k_j = load(k, j * rows + row, width)
+                d0 = d0 + _DENSE[0, j] * k_j
+                d1 = d1 + _DENSE[1, j] * k_j
+                d2 = d2 + _DENSE[2, j] * k_j
+            at = 5 * position * lanes
+            store(dense, at, load(x, row, width))
+            store(dense, at + lanes, load(x_new, row, width))
+            store(dense, at + 2 * lanes, d0)
+            store(dense, at + 3 * lanes, d1)
+            store(dense, at + 4 * lanes, d2)
+
+        # each lane accepts or rejects for itself
+        for lane in range(lanes):
+            hit = hit_of[lane]
+            if hit < 0:
+                square[lane] = np.inf
+                continue
+            tried[lane] += 1
+            status = RUNNING
+            good = square[lane] < 1.0 and growth[lane] < _GROWTH_LIMIT
+            if good:
+                n = pieces[lane]
+                piece_t[hit, n] = t[lane]
+                piece_h[hit, n] = step[lane]
+                for position in range(probes.size):
+                    for part in range(5):
+                        piece_c[hit, n, position, part] = dense[(5 * position + part) * lanes + lane]
+                pieces[lane] = n + 1
+                end = segment_end[hit, segment[lane]]
+                grow = min(factor[lane], _MOST_FACTOR)
+                if streak[lane] > 0:
+                    grow = min(grow, 1.0)
+                streak[lane] = 0
+                if step[lane] == end - t[lane]:
+                    t[lane] = end
+                    if segment[lane] == segment_count[hit] - 1:
+                        status = DONE
+                    else:
+                        segment[lane] += 1
+                        s = segment[lane]
+                        now_t[lane] = end
+                        for m in range(code.inputs):
+                            now_v[m * lanes + lane] = segment_v[hit, s, m]
+                            now_slope[m * lanes + lane] = segment_slope[hit, s, m]
+                        h[lane] = min(_FIRST_STEP_S, 1e-3 * (segment_end[hit, s] - end))
+                else:
+                    t[lane] = t[lane] + step[lane]
+                    h[lane] = max(step[lane] * grow, _LEAST_STEP_S)
+                if status == RUNNING and pieces[lane] >= piece_t.shape[1]:
+                    status = NO_ROOM
+            else:
+                rejected[lane] += 1
+                streak[lane] += 1
+                shrink = 0.25
+                if square[lane] >= 1.0 and square[lane] < np.inf:
+                    shrink = min(max(factor[lane], _LEAST_FACTOR), 0.9)
+                h[lane] = step[lane] * shrink
+                if growth[lane] >= _GROWTH_LIMIT:
+                    h[lane] = step[lane]
+                    status = PIVOT_COLLAPSED
+                elif h[lane] < _LEAST_STEP_S:
+                    status = STEP_TOO_SMALL if square[lane] < np.inf else NOT_FINITE
+                square[lane] = np.inf  # keeps x as it is below
+            if status == RUNNING and tried[lane] >= most_steps:
+                status = TOO_MANY_STEPS
+            if status != RUNNING:
+                worst = 0
+                for row in range(code.size):
+                    e = abs(error[row * lanes + lane])
+                    if not e <= abs(error[worst * lanes + lane]):
+                        worst = row
+                results[hit, 0] = status
+                results[hit, 1] = pieces[lane]
+                results[hit, 2] = tried[lane]
+                results[hit, 3] = rejected[lane]
+                results[hit, 4] = worst
+                end_worst[hit] = error[worst * lanes + lane]
+                end_t[hit] = t[lane]
+                end_h[hit] = h[lane]
+                for row in range(code.size):
+                    end_x[hit, row] = x_new[row * lanes + lane] if good else x[row * lanes + lane]
+                hit_of[lane] = FREE
+                fresh = True
+        accepted = load(square, 0, width)
+        for row in range(code.size):
+            at = row * lanes
+            store(x, at, pick_less(accepted, 1.0, load(x_new, at, width), load(x, at, width)))
+
+
+@kernel
+def matrix_at(code, numbers, coefficients, vectors, time_s, segment_t, segment_v, segment_slope, sines):
+    """Assemble W of one hit at the voltages in `vectors`; section w of `coefficients` is changed in place."""
+    arguments = np.zeros(code.exponentials + len(FLAT))
+    exp_slopes = np.zeros(code.exponentials + len(FLAT))
+    exp_values = np.zeros(code.exponentials + len(FLAT))
+    tanhs = np.zeros(code.tanhs + len(FLAT))
+    slopes = np.zeros(code.slopes)
+    second = np.zeros(code.inputs)
+    time = spread(time_s, LONE)
+    set_inputs(code, time, segment_t, segment_v, segment_slope, sines, vectors, second, LONE)
+    evaluate_devices(code, numbers, vectors, arguments, exp_slopes, exp_values, tanhs, slopes, LONE)
+    assemble(code, coefficients, slopes, LONE)

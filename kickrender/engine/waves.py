@@ -1,0 +1,71 @@
+"""Input waves as pieces between break points, so that a step ends on every corner."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from kickrender.circuit.records import Constant, Points, Pulse, Sine, Wave
+
+
+@dataclass(frozen=True, eq=False)
+class Segments:
+    """All inputs of a circuit over (0, length): linear within each segment, plus a sine where there is one.
+
+    end : (segments,) increasing, the last is the length. [s]
+    volts, slope : (segments, inputs) at the segment's start. [V], [V/s]
+    sines : (inputs, 3): amplitude [V], frequency [Hz], phase [turns].
+    """
+
+    end: NDArray[np.float64]
+    volts: NDArray[np.float64]
+    slope: NDArray[np.float64]
+    sines: NDArray[np.float64]
+
+
+def corners(wave: Wave) -> tuple[list[float], list[float]]:
+    """Times and voltages of the piecewise linear part; constant before the first and after the last."""
+    match wave:
+        case Pulse():
+            times = [0.0, wave.rise, wave.length, wave.length + wave.fall]
+            volts = [wave.rest, wave.strike, wave.strike, wave.rest]
+            if wave.length == wave.rise:
+                del times[1], volts[1]
+            return times, volts
+        case Constant():
+            return [0.0], [wave.level]
+        case Sine():
+            return [0.0], [wave.offset]
+        case Points():
+            return list(wave.times), list(wave.volts)
+    raise AssertionError(wave)
+
+
+def segments_of(waves: list[Wave], length_s: float) -> Segments:
+    """Break the waves at every corner of any of them before `length_s`."""
+    lines = [corners(wave) for wave in waves]
+    breaks = sorted({time for times, _ in lines for time in times if 0.0 < time < length_s})
+    end = np.array([*breaks, length_s])
+    start = np.array([0.0, *breaks])
+    volts = np.empty((end.size, len(waves)))
+    slope = np.zeros((end.size, len(waves)))
+    for m, (times, levels) in enumerate(lines):
+        for s, begin in enumerate(start):
+            volts[s, m] = levels[0]
+            for index, time in enumerate(times):
+                if time > begin:
+                    break
+                volts[s, m] = levels[index]
+                if index + 1 < len(times):
+                    per_second = (levels[index + 1] - levels[index]) / (times[index + 1] - time)
+                    slope[s, m] = per_second
+                    volts[s, m] += per_second * (begin - time)
+                else:
+                    slope[s, m] = 0.0
+    sines = np.zeros((len(waves), 3))
+    for m, wave in enumerate(waves):
+        if isinstance(wave, Sine):
+            sines[m] = wave.amplitude, wave.frequency, wave.phase_deg / 360.0
+    return Segments(end, volts, slope, sines)
