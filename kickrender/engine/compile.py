@@ -1,8 +1,8 @@
 """How the engine's functions are compiled, and where the compiled code is kept.
 
 numba's disk cache looks only at the file of the function it compiles: an edit in a callee's file goes unnoticed
-and a stale kernel would render. So the cache folder is named by a digest of every kernel source, in the user's
-own cache folder; numba itself keys on processor, version and signature.
+and a stale kernel would render. So the cache folder is named by a digest of the kernel's source and of everything of
+ours it imports, in the user's own cache folder; numba itself keys on processor, version and signature.
 
 Kernels divide by numpy's rules (1/0 is infinite, never an exception) and are compiled without fast-math, so that
 no operation is fused or reordered and every machine rounds alike.
@@ -13,6 +13,7 @@ from __future__ import annotations
 import functools
 import hashlib
 import os
+import re
 import tempfile
 from collections.abc import Callable
 from pathlib import Path
@@ -21,7 +22,9 @@ from typing import Any
 import numba
 from numba.core import config
 
-ENGINE_FOLDER = Path(__file__).parent
+ENGINE_FOLDER = Path(__file__).resolve().parent
+PACKAGE_FOLDER = ENGINE_FOLDER.parent
+_IMPORT = re.compile(r"^ *from (kickrender[\w.]*) import ([\w, ]+)", re.MULTILINE)
 
 
 def kernel(function: Callable[..., Any]) -> Callable[..., Any]:
@@ -37,11 +40,28 @@ def kernel(function: Callable[..., Any]) -> Callable[..., Any]:
 
 @functools.cache
 def cache_folder(source: Path) -> Path:
-    """The folder of compiled code that belongs to the engine's sources and to `source`."""
+    """The folder of compiled code that belongs to `source` and to every file of ours it imports, directly or not."""
     digest = hashlib.sha256()
-    for path in sorted({*ENGINE_FOLDER.rglob("*.py"), source}):
+    for path in sorted(_with_imports(source.resolve())):
         digest.update(path.name.encode() + b"\0" + path.read_bytes() + b"\0")
     return _cache_root() / digest.hexdigest()[:16]
+
+
+def _with_imports(source: Path) -> set[Path]:
+    """`source` and the files of this package it imports, found by reading their import lines."""
+    found, left = set(), [source]
+    while left:
+        path = left.pop()
+        if path in found:
+            continue
+        found.add(path)
+        for module, names in _IMPORT.findall(path.read_text(encoding="utf-8")):
+            base = PACKAGE_FOLDER.parent.joinpath(*module.split("."))
+            for name in names.split(","):
+                inside = base / name.strip()  # `from package import module` brings the module, not the package
+                choices = (inside.with_suffix(".py"), inside / "__init__.py", base.with_suffix(".py"), base / "__init__.py")
+                left += [file for file in choices if file.is_file()][:1]
+    return found
 
 
 @functools.cache
