@@ -11,6 +11,7 @@ from dataclasses import dataclass, field
 
 from kickrender.circuit.kinds import KINDS, Pairs
 from kickrender.circuit.records import GROUND, Part
+from kickrender.circuit.values import format_value
 from kickrender.errors import Fault, nearest_name
 
 
@@ -21,14 +22,15 @@ class Wiring:
     parts : the parts that could be read.
     unread : nets of parts that could not be read, per part: their nets count as touched and as connected, so that
         one bad part does not bring a train of faults behind it.
-    held : nets with a fixed voltage, and driven ones: `ground`, held nets, inputs.
+    held : nets whose voltage is given -> that voltage, None when it moves or could not be read: `ground`, held
+        nets, inputs. [V]
     output : the output's net; None when that could not be read.
     place : where a name stands, for a fault: place("parts", "R1").
     """
 
     parts: Mapping[str, Part]
     unread: Mapping[str, Sequence[str]]
-    held: frozenset[str]
+    held: Mapping[str, float | None]
     output: str | None
     place: Callable[..., str]
     touches: Mapping[str, list[tuple[str, str]]] = field(init=False)
@@ -67,9 +69,9 @@ class _Groups:
 
 
 def wiring_faults(wiring: Wiring) -> list[Fault]:
-    """Every fault of the wiring, in order: drives, output, touches, ways to ground, coils."""
+    """Every fault of the wiring: what drives what, rails, the output, lonely nets, ways to ground, coils."""
     driven = _drives(wiring)
-    faults = _drive_faults(wiring, driven)
+    faults = _drive_faults(wiring, driven) + _order_faults(wiring)
     lonely = _lonely_nets(wiring)
     faults += _output_faults(wiring)
     faults += [_lonely_fault(wiring, net) for net in lonely]
@@ -107,6 +109,19 @@ def _drive_faults(wiring: Wiring, driven: Mapping[str, Sequence[tuple[str, str]]
     return faults
 
 
+def _order_faults(wiring: Wiring) -> list[Fault]:
+    faults = []
+    for part in wiring.parts.values():
+        for upper, lower in _pairs(part, KINDS[part.kind].ordered):
+            high, low = wiring.held.get(upper), wiring.held.get(lower)
+            if high is not None and low is not None and high <= low:
+                found = (
+                    f"upper net '{upper}' at {format_value(high, 'V')}, lower net '{lower}' at {format_value(low, 'V')}"
+                )
+                faults.append(Fault(wiring.place("parts", part.name), found, "the upper net first, above the lower"))
+    return faults
+
+
 def _output_faults(wiring: Wiring) -> list[Fault]:
     net = wiring.output
     if net is None or net in wiring.touches or net in wiring.held:
@@ -125,7 +140,7 @@ def _lonely_nets(wiring: Wiring) -> list[str]:
 
 def _lonely_fault(wiring: Wiring, net: str) -> Fault:
     name, role = wiring.touches[net][0]
-    known = [other for other in {**wiring.touches, **dict.fromkeys(sorted(wiring.held))} if other != net]
+    known = [other for other in {**wiring.touches, **wiring.held} if other != net]
     found = f"only {name} ({role}) touches net '{net}'"
     return Fault(wiring.place("parts", name), found, "nets that two terminals touch", nearest_name(net, known))
 

@@ -9,8 +9,8 @@ from __future__ import annotations
 
 import re
 from collections.abc import Callable, Mapping
-from functools import lru_cache
-from typing import Annotated, Any
+from functools import cache
+from typing import Annotated, Any, Literal
 
 from pydantic import BaseModel, ConfigDict, Field, ValidationError, create_model, model_validator
 from pydantic_core import PydanticCustomError, core_schema
@@ -34,7 +34,7 @@ class Leaf:
         return core_schema.no_info_plain_validator_function(self._check)
 
     def __get_pydantic_json_schema__(self, schema: Any, handler: Any) -> dict[str, Any]:
-        return self.schema
+        return dict(self.schema)  # pydantic adds defaults and titles to what it is given
 
     def _check(self, raw: Any) -> Any:
         try:
@@ -57,7 +57,8 @@ def read_name(raw: object) -> str:
     return raw
 
 
-def _read_text(raw: object) -> str:
+def read_text(raw: object) -> str:
+    """A text, or an InputError."""
     if not isinstance(raw, str):
         raise InputError(Fault("text", shown(raw), "a text in quotes"))
     return raw
@@ -85,7 +86,11 @@ def _read_points(raw: object) -> tuple[tuple[float, float], ...]:
 def _quantity(rule: Quantity) -> Leaf:
     bounds = {"exclusiveMinimum": rule.above, "minimum": rule.at_least, "maximum": rule.at_most}
     number = {"type": "number"} | {key: bound for key, bound in bounds.items() if bound is not None}
-    about = rule.about + (f" [{rule.unit}]" if rule.unit else "") + f": a number or text such as {UNITS[rule.unit].examples}"
+    about = (
+        rule.about
+        + (f" [{rule.unit}]" if rule.unit else "")
+        + f": a number or text such as {UNITS[rule.unit].examples}"
+    )
     return Leaf(rule.read, {"anyOf": [number, {"type": "string"}], "description": about})
 
 
@@ -106,7 +111,7 @@ def _nets(count: int) -> Leaf:
 _LAW = Choice("how a walk from 0 to 1 maps onto the range", ("linear", "geometric"))
 
 Name = Annotated[str, Leaf(read_name, {"type": "string", "pattern": f"^{NAME.pattern}$"})]
-Text = Annotated[str, Leaf(_read_text, {"type": "string"})]
+Text = Annotated[str, Leaf(read_text, {"type": "string"})]
 Scalar = Annotated[str | float, Leaf(_read_scalar, {"type": ["number", "string"]})]
 Volts = Annotated[float, _quantity(Quantity("V", "voltage"))]
 FullScale = Annotated[float, _quantity(Quantity("V", "voltage written as 1.0 when no level is asked for", above=0.0))]
@@ -114,7 +119,7 @@ Seconds = Annotated[float, _quantity(Quantity("s", "time", above=0.0))]
 Hertz = Annotated[float, _quantity(Quantity("Hz", "frequency", above=0.0))]
 Degrees = Annotated[float, _quantity(Quantity("deg", "angle"))]
 Kelvin = Annotated[float, _quantity(Quantity("K", "temperature"))]
-Law = Annotated[str, _choice(_LAW)]
+Law = Annotated[Literal["linear", "geometric"], _choice(_LAW)]
 PointList = Annotated[
     tuple[tuple[float, float], ...],
     Leaf(_read_points, {"type": "array", "minItems": 1, "items": {"type": "array", "minItems": 2, "maxItems": 2}}),
@@ -139,7 +144,9 @@ class PulseTable(Table):
     @model_validator(mode="after")
     def _in_order(self) -> PulseTable:
         if self.rise > self.length:
-            raise _fault(f"a rise of {self.rise:g} s in a pulse of {self.length:g} s", "a rise no longer than the pulse")
+            raise _fault(
+                f"a rise of {self.rise:g} s in a pulse of {self.length:g} s", "a rise no longer than the pulse"
+            )
         return self
 
 
@@ -217,15 +224,11 @@ def _field(rule: FieldRule) -> tuple[Any, Any]:
     return Annotated[float, Leaf(rule.read, {"type": "boolean", "description": rule.about})], ...
 
 
-def _kind_field(kind: str) -> tuple[Any, Any]:
-    return Annotated[str, Leaf(str, {"const": kind})], ...
-
-
-@lru_cache(maxsize=None)
+@cache
 def part_table(kind: str) -> type[Table]:
     """The shape of a part of this kind."""
     row = KINDS[kind]
-    fields: dict[str, Any] = {"kind": _kind_field(kind)}
+    fields: dict[str, Any] = {"kind": (Literal[kind], ...)}
     fields |= {key: _field(rule) for key, rule in row.fields.items()}
     if row.model:
         fields["model"] = (Name, ...)
@@ -249,11 +252,11 @@ def _one_wiring(row: Kind) -> dict[str, Any]:
     return {"one_wiring": model_validator(mode="after")(check)}
 
 
-@lru_cache(maxsize=None)
+@cache
 def model_table(kind: str) -> type[Table]:
     """The shape of a device model of this kind."""
     row = KINDS[kind]
-    fields: dict[str, Any] = {"kind": _kind_field(kind), "source": (Text, "assumed")}
+    fields: dict[str, Any] = {"kind": (Literal[kind], ...), "source": (Text, "assumed")}
     fields |= {key: _field(rule) for key, rule in row.model.items()}
     return create_model(f"{kind} model", __base__=Table, __doc__=f"device data of a kind: {row.about}", **fields)
 

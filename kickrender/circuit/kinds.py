@@ -109,6 +109,7 @@ class Kind:
     conducts : pairs of roles between which direct current can flow.
     coils : pairs of roles joined by an inductor, a short circuit at rest.
     drives : roles whose net's voltage the part sets.
+    ordered : pairs of roles of which the first must lie above the second, where both nets are held.
     """
 
     about: str
@@ -121,6 +122,7 @@ class Kind:
     conducts: Pairs = ()
     coils: Pairs = ()
     drives: tuple[str, ...] = ()
+    ordered: Pairs = ()
 
     @property
     def terminal_keys(self) -> tuple[str, ...]:
@@ -249,9 +251,7 @@ KINDS: Mapping[str, Kind] = MappingProxyType(
             wirings=(_BETWEEN,),
             fields={"closed": Flag("whether it conducts")},
             setting="closed",
-            electrical=lambda part: {
-                "resistance": SWITCH_CLOSED_OHM if part.values["closed"] else SWITCH_OPEN_OHM
-            },
+            electrical=lambda part: {"resistance": SWITCH_CLOSED_OHM if part.values["closed"] else SWITCH_OPEN_OHM},
             units={"resistance": "ohm"},
             conducts=(("a", "b"),),
         ),
@@ -268,6 +268,7 @@ KINDS: Mapping[str, Kind] = MappingProxyType(
             wirings=({**_each("plus", "minus", "out"), "rails": ("rail_high", "rail_low")},),
             model=_OPAMP_MODEL,
             drives=("out",),
+            ordered=(("rail_high", "rail_low"),),
         ),
     }
 )

@@ -10,7 +10,7 @@ import re
 
 _KEY = r"""(?:[A-Za-z0-9_-]+|"[^"\n]*"|'[^'\n]*')"""
 _PATH = rf"{_KEY}(?:\s*\.\s*{_KEY})*"
-_HEADER = re.compile(rf"\s*\[\[?\s*({_PATH})\s*\]")
+_HEADER = re.compile(rf"\s*\[(\[?)\s*({_PATH})\s*\]")
 _ASSIGNMENT = re.compile(rf"\s*({_PATH})\s*=")
 _LONG_QUOTES = re.compile(r'"""|\'\'\'')
 
@@ -25,6 +25,7 @@ class Lines:
     def __init__(self, text: str) -> None:
         self._line: dict[tuple[str, ...], int] = {}
         table: tuple[str, ...] = ()
+        entries: dict[tuple[str, ...], int] = {}  # arrays of tables: how many of each so far
         inside = ""  # the quotes of the multi-line text this line starts in
         for number, line in enumerate(text.splitlines(), start=1):
             starts_inside = inside
@@ -33,7 +34,13 @@ class Lines:
             if starts_inside:
                 continue
             if header := _HEADER.match(line):
-                table = _keys(header.group(1))
+                table = _keys(header.group(2))
+                if header.group(1):
+                    entries[table] = entries.get(table, -1) + 1
+                    self._line.setdefault(table, number)
+                for array in (table[:end] for end in range(len(table), 0, -1)):
+                    if array in entries:
+                        table = (*array, str(entries[array]), *table[len(array) :])
                 self._line.setdefault(table, number)
             elif assignment := _ASSIGNMENT.match(line):
                 path = table + _keys(assignment.group(1))

@@ -63,8 +63,11 @@ def control_value(control: Control, walk: float) -> float:
     if walk in (0.0, 1.0):
         return control.high if walk else control.low
     if control.law == "geometric":
-        return control.low * exact.power(control.high / control.low, walk)
-    return control.low + (control.high - control.low) * walk
+        value = control.low * exact.power(control.high / control.low, walk)
+    else:
+        value = control.low + (control.high - control.low) * walk
+    # Rounding may step over an end by the last bit, and the control would then refuse its own value.
+    return min(max(value, min(control.low, control.high)), max(control.low, control.high))
 
 
 def control_walk(control: Control, value: float) -> float:

@@ -238,4 +238,6 @@ def _complaint(text: str, rest: str, unit: str) -> str:
 
 def _unreadable(found: str, unit: str, place: str) -> InputError:
     examples = UNITS[unit].examples
-    return InputError(Fault(place, found, f"a value in {unit} ({examples})" if unit else f"a plain number ({examples})"))
+    return InputError(
+        Fault(place, found, f"a value in {unit} ({examples})" if unit else f"a plain number ({examples})")
+    )
