@@ -5,6 +5,7 @@ KickrenderError            exit code 1
   SolveError               a circuit could not be solved
   MeasurementError         a sound has no such measurement
   WriteError               a file or folder could not be written
+  WorkerError              a worker process was lost
 """
 
 from __future__ import annotations
@@ -112,6 +113,10 @@ class MeasurementError(KickrenderError):
 
 class WriteError(KickrenderError):
     """A file or folder could not be written; nothing half-written is left."""
+
+
+class WorkerError(KickrenderError):
+    """A worker process was lost; the files it wrote are whole."""
 
 
 def nearest_name(name: str, known: Iterable[str]) -> str | None:

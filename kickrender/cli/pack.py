@@ -1,0 +1,65 @@
+"""`kickrender pack`: the main job."""
+
+from __future__ import annotations
+
+import os
+import sys
+from pathlib import Path
+
+import click
+
+from kickrender.cli.settings import note
+from kickrender.cli.solver import ready_solver
+from kickrender.errors import Fault, InputError, KickrenderError
+
+
+@click.command()
+@click.argument("pack")
+@click.option("--out", type=click.Path(path_type=Path), help="The folder to fill; made when missing.")
+@click.option("--jobs", type=click.IntRange(min=1), help="Worker processes.  [default: one per core]")
+@click.option("--dry-run", is_flag=True, help="Check everything and name every hit; render nothing.")
+def pack(pack: str, out: Path | None, jobs: int | None, dry_run: bool) -> None:
+    """Render every hit of PACK: one WAV and one sidecar each, and pack.json and pack.csv over all.
+
+    A second run renders only what is missing or changed. No file depends on the number of workers.
+
+    \b
+    Examples:
+      kickrender pack night-ferry --out night-ferry
+      kickrender pack my-pack.toml --out library --jobs 4
+      kickrender pack my-pack.toml --dry-run
+    """
+    if out is None and not dry_run:
+        raise InputError(Fault("kickrender pack", "--out is missing", "--out FOLDER, or --dry-run"))
+    from kickrender.pack.plan import plan_pack
+    from kickrender.pack.read import read_pack
+
+    plan = plan_pack(read_pack(pack))
+    if out is None or dry_run:
+        click.echo(f"{plan.title}: {len(plan.hits)} hits")
+        for hit in plan.hits:
+            click.echo(f"  {hit.name}.wav")
+        return
+    from kickrender.pack.run import render_plan
+
+    ready_solver()
+    with click.progressbar(
+        length=len(plan.hits), label=plan.title, file=sys.stderr, hidden=not sys.stderr.isatty()
+    ) as bar:
+        result = render_plan(plan, out, jobs or cores(), bar.update)
+    if result.kept:
+        note(f"{len(result.kept)} hits were there already")
+    for name in result.stale:
+        note(f"note: {name}.wav is of an earlier run and no hit of this pack any more")
+    click.echo(f"{out}: {len(result.rendered) + len(result.kept)} hits, {len(result.rendered)} of them rendered now")
+    if result.failed:
+        raise HitsFailed("\n".join(f"{name}: {reason}" for name, reason in result.failed.items()))
+
+
+class HitsFailed(KickrenderError):
+    """Some hits have no file; the message says which and why."""
+
+
+def cores() -> int:
+    """How many cores this process may use."""
+    return len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count() or 1

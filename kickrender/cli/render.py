@@ -1,0 +1,65 @@
+"""`kickrender render`: one hit."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import click
+
+from kickrender.cli.settings import json_option, note, print_json, read_settings, set_option
+from kickrender.cli.solver import ready_solver
+
+
+@click.command()
+@click.argument("circuit")
+@click.option("--out", type=click.Path(path_type=Path), required=True, help="The WAV file; its sidecar stands beside.")
+@set_option
+@click.option("--rate", metavar="HZ", help="Sample rate, 22050 to 192000.  [default: 48000]")
+@click.option("--format", "sample_format", metavar="FORMAT", help="pcm16, pcm24 or float32.  [default: pcm24]")
+@click.option("--length", metavar="SECONDS", help="Length; by default until the sound has died away, at most 4 s.")
+@click.option("--oversample", metavar="TIMES", help="A power of two up to 64; 1 means unfiltered.  [default: 8]")
+@click.option("--raw", is_flag=True, help="Volts over full scale from t = 0: no level, trim, fade or dither.")
+@click.option("--level", metavar="LEVEL", help='Wanted level: "-14 LUFS", "-1 dBTP", "-3 dBFS".  [default: none]')
+@click.option("--probe", "probes", metavar="NET", multiple=True, help="One more channel: this net. May be given again.")
+@json_option
+def render(
+    circuit: str,
+    out: Path,
+    settings: tuple[str, ...],
+    rate: str | None,
+    sample_format: str | None,
+    length: str | None,
+    oversample: str | None,
+    raw: bool,
+    level: str | None,
+    probes: tuple[str, ...],
+    as_json: bool,
+) -> None:
+    """Strike CIRCUIT once and write the sound, with a sidecar (.json) that holds its whole recipe.
+
+    \b
+    Examples:
+      kickrender render bridged-t --out hit.wav
+      kickrender render bridged-t --set decay=0.8 --set accent=5V --level "-16 LUFS" --out long.wav
+      kickrender render my-circuit.toml --raw --length 0.5 --format float32 --probe core --out nets.wav
+    """
+    from kickrender.sound.loaded import load
+    from kickrender.sound.options import read_options
+    from kickrender.sound.wav import check_wav_name
+
+    options = read_options(
+        {"rate": rate, "format": sample_format, "length": length, "oversample": oversample, "raw": raw or None},
+        place=lambda name: f"--{name}",
+    )
+    loaded = load(circuit)
+    loaded.check(read_settings(settings), probes=probes, level=level)
+    check_wav_name(out)
+    ready_solver()
+    sound = loaded.render(read_settings(settings), options=options, level=level, probes=probes)
+    sound.write(out)
+    for text in sound.facts["notes"]:
+        note(f"note: {text}")
+    if as_json:
+        print_json(sound.facts)
+    else:
+        click.echo(f"{out}: {sound.summary()}")

@@ -1,0 +1,103 @@
+"""How a sound is to be written: rate, format, length, oversampling, raw or finished."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass
+from typing import Any
+
+from kickrender.circuit.kinds import Choice, Flag, Quantity
+from kickrender.circuit.values import parse_value, shown
+from kickrender.errors import Fault, InputError, nearest_name
+
+FORMATS = ("pcm16", "pcm24", "float32")
+LOWEST_RATE_HZ, HIGHEST_RATE_HZ = 22_050, 192_000
+OVERSAMPLES = (1, 2, 4, 8, 16, 32, 64)
+SHORTEST_S, LONGEST_S = 0.001, 60.0
+LONGEST_UNASKED_S = 4.0  # where a sound that never dies is cut when no length is asked for
+
+
+@dataclass(frozen=True)
+class SoundOptions:
+    """What is asked of a file.
+
+    rate_hz : samples per second of the file.
+    format : one of FORMATS.
+    length_s : None means until the sound has died away (-90 dB of its peak), at most LONGEST_UNASKED_S.
+    oversample : how many times the file's rate the solution is sampled at before decimation; 1 means unfiltered.
+    raw : volts over full scale from t = 0, with no level, trim, fade or dither.
+    """
+
+    rate_hz: int = 48_000
+    format: str = "pcm24"
+    length_s: float | None = None
+    oversample: int = 8
+    raw: bool = False
+
+    @property
+    def longest_s(self) -> float:
+        """For how long to solve: the length asked for, or the longest that is given unasked. [s]"""
+        return LONGEST_UNASKED_S if self.length_s is None else self.length_s
+
+
+def read_options(given: Mapping[str, Any], place: Callable[[str], str]) -> SoundOptions:
+    """The options written as `rate`, `format`, `length`, `oversample`, `raw`, checked together.
+
+    Parameters
+    ----------
+    given : mapping
+        Names to texts, numbers or booleans; None means not given.
+    place : function
+        From a name to the place a fault is reported at ("--rate", "file.toml:4, sound.rate").
+
+    Raises
+    ------
+    InputError
+        With every fault: unknown names, values out of range.
+    """
+    faults: list[Fault] = []
+    chosen: dict[str, Any] = {}
+    for name, value in given.items():
+        if name not in _READERS:
+            faults.append(
+                Fault(place(name), f"unknown key '{name}'", ", ".join(_READERS), nearest_name(name, _READERS))
+            )
+        elif value is not None:
+            field, read = _READERS[name]
+            try:
+                chosen[field] = read(value, place(name))
+            except InputError as error:
+                faults.extend(error.faults)
+    if faults:
+        raise InputError(faults)
+    return SoundOptions(**chosen)
+
+
+def _whole(quantity: Quantity) -> Callable[[object, str], int]:
+    def read(raw: object, place: str) -> int:
+        value = quantity.read(raw, place)
+        if value != int(value):
+            raise InputError(Fault(place, f"{shown(raw)} is not a whole number", quantity.range))
+        return int(value)
+
+    return read
+
+
+def _oversample(raw: object, place: str) -> int:
+    value = parse_value(raw, "", place)
+    if value not in OVERSAMPLES:
+        raise InputError(Fault(place, f"found {shown(raw)}", ", ".join(map(str, OVERSAMPLES))))
+    return int(value)
+
+
+_RATE = Quantity("Hz", "samples per second", at_least=LOWEST_RATE_HZ, at_most=HIGHEST_RATE_HZ)
+_LENGTH = Quantity("s", "length of the file", at_least=SHORTEST_S, at_most=LONGEST_S)
+_FORMAT = Choice("sample format", FORMATS)
+_RAW = Flag("whether to leave the samples as they come")
+_READERS: Mapping[str, tuple[str, Callable[[object, str], Any]]] = {
+    "rate": ("rate_hz", _whole(_RATE)),
+    "format": ("format", _FORMAT.read),
+    "length": ("length_s", _LENGTH.read),
+    "oversample": ("oversample", _oversample),
+    "raw": ("raw", lambda raw, place: bool(_RAW.read(raw, place))),
+}

@@ -1,0 +1,102 @@
+"""What a sidecar says: the whole recipe of a sound, and what was measured, as plain JSON values.
+
+Nothing in it depends on when, where or by how many workers a sound was rendered.
+"""
+
+from __future__ import annotations
+
+import json
+from collections.abc import Mapping
+from dataclasses import asdict
+from pathlib import Path
+from typing import Any
+
+from kickrender.circuit import Circuit, Model, Part, ResolvedCircuit, ResolvedPart, Wave
+from kickrender.circuit.kinds import KINDS
+from kickrender.circuit.settings import unit_of
+from kickrender.errors import WriteError
+
+SCHEMA = "kickrender sidecar"
+SCHEMA_VERSION = 1
+WAVE_UNITS = {"frequency": "Hz", "phase_deg": "deg", "length": "s", "rise": "s", "fall": "s", "times": "s"}
+
+
+def circuit_facts(circuit: Circuit, resolved: ResolvedCircuit) -> dict[str, Any]:
+    """Everything electrical about a hit: settings, parts, models, supplies, inputs, each value with its unit."""
+    models = {part.model.name: part.model for part in resolved.parts.values() if part.model is not None}
+    return {
+        "circuit": {"name": circuit.name, "title": circuit.title, "digest": circuit.digest},
+        "settings": {name: _value(value, unit_of(circuit, name)) for name, value in resolved.settings.items()},
+        "temperature": _value(resolved.temperature_k, "K"),
+        "nets": {name: _value(volts, "V") for name, volts in resolved.nets.items()},
+        "inputs": {name: _wave(wave) for name, wave in resolved.inputs.items()},
+        "parts": {name: _part(circuit.parts[name], part) for name, part in resolved.parts.items()},
+        "models": {name: _model(model) for name, model in sorted(models.items())},
+        "output": {"net": resolved.output, "full_scale": _value(resolved.full_scale_v, "V")},
+    }
+
+
+def _value(value: float | bool, unit: str) -> dict[str, Any]:
+    return {"value": value, "unit": unit}
+
+
+def _part(written: Part, part: ResolvedPart) -> dict[str, Any]:
+    """A part's resolved values; a pot's or switch's position too, from which they come."""
+    units = KINDS[part.kind].units
+    facts: dict[str, Any] = {"kind": part.kind, "terminals": dict(part.terminals)}
+    if part.model is not None:
+        facts["model"] = part.model.name
+    if part.values:
+        facts["values"] = {name: _value(value, units[name]) for name, value in part.values.items()}
+    return facts
+
+
+def _model(model: Model) -> dict[str, Any]:
+    rows = KINDS[model.kind].model
+    values = {name: _value(value, rows[name].unit) for name, value in model.values.items()}
+    return {"kind": model.kind, "source": model.source, "values": values}
+
+
+def _wave(wave: Wave) -> dict[str, Any]:
+    values = {
+        name: _value(list(value) if isinstance(value, tuple) else value, WAVE_UNITS.get(name, "V"))
+        for name, value in asdict(wave).items()
+    }
+    return {"wave": type(wave).__name__.lower(), "values": values}
+
+
+def json_bytes(facts: Mapping[str, Any]) -> bytes:
+    """JSON for a file: indented, in the order given, UTF-8, one line feed at the end; refuses what JSON cannot hold."""
+    return (json.dumps(facts, indent=2, ensure_ascii=False, allow_nan=False) + "\n").encode()
+
+
+def read_sidecar(path: Path) -> dict[str, Any] | None:
+    """A sidecar's facts; None when there is no such file or it is no whole sidecar of this version."""
+    try:
+        facts = json.loads(path.read_bytes())
+    except (OSError, ValueError):
+        return None
+    known = isinstance(facts, dict) and (facts.get("schema"), facts.get("schema_version")) == (SCHEMA, SCHEMA_VERSION)
+    return facts if known else None
+
+
+def check_ours(path: Path) -> None:
+    """Refuse to replace a .json that somebody else wrote.
+
+    Raises
+    ------
+    WriteError
+        If there is a file that neither begins as kickrender's do nor is empty.
+    """
+    try:
+        with path.open("rb") as file:
+            start = file.read(len(_START))
+    except FileNotFoundError:
+        return
+    except OSError as error:
+        raise WriteError(f"{path}: {error.strerror}") from None
+    if start and start != _START:
+        raise WriteError(f"{path}: exists and was not written by kickrender; move it, or choose another name")
+
+
+_START = b'{\n  "schema": "kickrender '
