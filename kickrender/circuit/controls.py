@@ -64,7 +64,8 @@ def control_record(entry: Entry, targets: Targets) -> Control | None:
     # The control's own range is what its start must lie in; the target's is wider.
     start = own if table.start is None else Quantity(rule.unit, "start").read(table.start, entry.at("start"))
     if not min(low, high) <= start <= max(low, high):
-        what = f"{shown(table.start)}" if table.start is not None else f"no start, and '{target}' at {own:g}"
+        own_value = f"no start, and '{target}' at {format_value(own, rule.unit)}"
+        what = own_value if table.start is None else shown(table.start)
         limits = f"{format_value(low, rule.unit)} to {format_value(high, rule.unit)}"
         raise InputError(Fault(entry.at("start"), f"{what} is outside the control's range", limits))
     return Control(entry.name, act, target, low, high, start, table.law, rule.unit)

@@ -172,7 +172,7 @@ class InputTable(Table):
         waves = tuple(type(self).model_fields)
         given = [key for key in waves if getattr(self, key) is not None]
         if len(given) != 1:
-            raise _fault(" and ".join(given) or "no wave", f"exactly one of {', '.join(waves)}")
+            raise _fault(" beside ".join(given) or "no wave", f"exactly one of {', '.join(waves)}")
         return self
 
     def wave(self) -> Wave:
@@ -202,7 +202,7 @@ class ControlTable(Table):
     def _one_act(self) -> ControlTable:
         given = [act for act in ("turns", "drives", "sets") if getattr(self, act) is not None]
         if len(given) != 1:
-            raise _fault(" and ".join(given) or "no target", "exactly one of turns, drives, sets")
+            raise _fault(" beside ".join(given) or "no target", "exactly one of turns, drives, sets")
         return self
 
 

@@ -27,7 +27,7 @@ class Lines:
         table: tuple[str, ...] = ()
         entries: dict[tuple[str, ...], int] = {}  # arrays of tables: how many of each so far
         inside = ""  # the quotes of the multi-line text this line starts in
-        for number, line in enumerate(text.splitlines(), start=1):
+        for number, line in enumerate(text.split("\n"), start=1):
             starts_inside = inside
             for quotes in _LONG_QUOTES.findall(line):
                 inside = "" if inside == quotes else inside or quotes

@@ -13,7 +13,6 @@ from typing import TYPE_CHECKING
 from kickrender.circuit import exact
 from kickrender.circuit.kinds import KINDS, Flag, Quantity
 from kickrender.circuit.records import Constant, Control, Part, Pulse, ResolvedCircuit, ResolvedPart, Sine, Wave
-from kickrender.circuit.values import format_value
 from kickrender.errors import Fault, InputError, nearest_name
 
 if TYPE_CHECKING:
@@ -161,14 +160,6 @@ def _resolved(part: Part, value: float | None) -> ResolvedPart:
     if value is not None and row.setting:
         part = replace(part, values={**part.values, row.setting: value})
     return ResolvedPart(part.name, part.kind, part.terminals, row.electrical(part), part.model)
-
-
-def settings_text(settings: Mapping[str, float | bool], circuit: Circuit) -> dict[str, str]:
-    """Settings as people write them, with units: {"accent": "3V", "decay": "0.6"}."""
-    return {
-        name: ("true" if value else "false") if isinstance(value, bool) else format_value(value, unit_of(circuit, name))
-        for name, value in settings.items()
-    }
 
 
 def unit_of(circuit: Circuit, name: str) -> str:

@@ -69,7 +69,7 @@ def read_source(
             )
         path = shipped[text]
     try:
-        content = path.read_text("utf-8")
+        content = path.read_text("utf-8-sig")  # some editors put a byte order mark first
     except UnicodeDecodeError as error:
         raise InputError(Fault(str(path), f"byte {error.start} is not UTF-8", "a TOML file")) from None
     except (OSError, ValueError) as error:
@@ -88,5 +88,6 @@ def parse_source(text: str, place: str, path: Path | None = None) -> Source:
         message, _, position = str(error).partition(" (at ")
         line = position.removeprefix("line ").partition(",")[0]
         where = f"{place}:{line}" if line.isdigit() else place
-        raise InputError(Fault(where, f"not TOML: {message[:1].lower()}{message[1:]}")) from None
+        found = f"not TOML: {message[:1].lower()}{message[1:]}"
+        raise InputError(Fault(where, found, 'TOML, with values that hold letters in quotes ("47k")')) from None
     return Source(place, path, raw, Lines(text))

@@ -4,12 +4,13 @@
     parse_value("3n3", "F")         -> 3.3e-09
     format_value(18e-9, "F")        -> "18n"
 
-Every text is rebuilt as one decimal literal and converted once, so that "3n3" is the float 3.3e-9 and not
-3.3 * 1e-9, which is another number. `M` is mega and `m` is milli; `F` after a number is farad, never femto.
+Every text is rebuilt as one decimal literal and converted once, so that "4n7" is the float 4.7e-9 and not
+4.7 * 1e-9, which is another number. `M` is mega and `m` is milli; `F` after a number is farad, never femto.
 """
 
 from __future__ import annotations
 
+import datetime
 import decimal
 import math
 import numbers
@@ -24,7 +25,7 @@ PREFIXES: Mapping[str, int] = MappingProxyType(
     # The micro sign exists twice in Unicode, as U+00B5 and as the Greek letter; `u` is what keyboards have.
     {"f": -15, "p": -12, "n": -9, "u": -6, "\u00b5": -6, "\u03bc": -6, "m": -3, "k": 3, "M": 6, "G": 9, "T": 12}
 )
-_PREFIX_OF = {-15: "f", -12: "p", -9: "n", -6: "u", -3: "m", 0: "", 3: "k", 6: "M", 9: "G", 12: "T"}
+_PREFIX_OF = {power: prefix for prefix, power in PREFIXES.items() if prefix.isascii()} | {0: ""}
 
 CELSIUS_ZERO_K = decimal.Decimal("273.15")
 # The device equations are fits around room temperature. The limits also catch `temperature = 25` meant in
@@ -39,49 +40,42 @@ class Unit:
     spellings : text after the number -> power of ten it stands for.
     code : letters of IEC 60062 that may take the place of the decimal point -> power of ten.
     examples : shown when a value cannot be read.
-    prefixes : whether SI prefixes may stand before a spelling, or alone.
+    prefixes : the SI prefixes that may stand before a spelling, or alone. Those of another kind of part are left
+        out, so that a resistor of "100n" is a fault and not a short circuit.
     silent : whether `format_value` leaves the unit off, as schematics do for parts.
     """
 
     spellings: Mapping[str, int]
     examples: str
+    prefixes: str = ""
     code: Mapping[str, int] = field(default_factory=dict)
-    prefixes: bool = True
     silent: bool = False
 
+
+_MICRO = {"u": -6, "\u00b5": -6, "\u03bc": -6}
 
 UNITS: Mapping[str, Unit] = MappingProxyType(
     {
         "ohm": Unit(
             {"ohm": 0, "ohms": 0, "\u03a9": 0, "\u2126": 0},
             "'47k', '4.7 kohm', '4k7'",
+            "mkMGT",
             {"L": -3, "R": 0, "K": 3, "k": 3, "M": 6, "G": 9, "T": 12},
             silent=True,
         ),
         "F": Unit(
-            {"F": 0},
-            "'18n', '18 nF', '3n3'",
-            {"p": -12, "n": -9, "u": -6, "\u00b5": -6, "\u03bc": -6, "m": -3, "F": 0},
-            silent=True,
+            {"F": 0}, "'18n', '18 nF', '3n3'", "fpnum", {"p": -12, "n": -9, **_MICRO, "m": -3, "F": 0}, silent=True
         ),
         # The code's standard covers resistors and capacitors; inductors are marked the same way in practice.
-        "H": Unit(
-            {"H": 0},
-            "'10m', '10 mH', '4m7'",
-            {"n": -9, "u": -6, "\u00b5": -6, "\u03bc": -6, "m": -3, "H": 0},
-            silent=True,
-        ),
-        "V": Unit({"V": 0}, "'5V', '100 mV'"),
-        "A": Unit({"A": 0}, "'2.5n', '10 fA'"),
-        "S": Unit({"S": 0}, "'1m', '1 mS'"),
-        "s": Unit({"s": 0}, "'4ms', '2 us'"),
-        "Hz": Unit({"Hz": 0}, "'100Hz', '3 MHz'"),
-        "V/s": Unit({"V/s": 0, "V/us": 6, "V/\u00b5s": 6, "V/\u03bcs": 6}, "'13 V/us', '500k'"),
-        "A/V^2": Unit({"A/V^2": 0}, "'1m', '1 mA/V^2'"),
-        "1/V": Unit({"1/V": 0}, "'0.01'"),
-        "deg": Unit({"deg": 0, "\u00b0": 0}, "'90deg'", prefixes=False),
-        "K": Unit({"K": 0, "C": 0, "\u00b0C": 0}, "'25C', '298.15K'", prefixes=False),
-        "": Unit({"": 0}, "0.5, '200k'"),
+        "H": Unit({"H": 0}, "'10m', '10 mH', '4m7'", "pnum", {"n": -9, **_MICRO, "m": -3, "H": 0}, silent=True),
+        "V": Unit({"V": 0}, "'5V', '100 mV'", "pnumk"),
+        "A": Unit({"A": 0}, "'2.5n', '10 fA'", "fpnum"),
+        "s": Unit({"s": 0}, "'4ms', '2 us'", "pnum"),
+        "Hz": Unit({"Hz": 0}, "'100Hz', '3 MHz'", "mkMG"),
+        "V/s": Unit({"V/s": 0, "V/us": 6, "V/\u00b5s": 6, "V/\u03bcs": 6}, "'13 V/us', '500k'", "mkMG"),
+        "deg": Unit({"deg": 0, "\u00b0": 0}, "'90deg'"),
+        "K": Unit({"K": 0, "C": 0, "\u00b0C": 0}, "'25C', '298.15K'"),
+        "": Unit({"": 0}, "0.5, '200k'", "pnumkMGT"),
     }
 )
 
@@ -151,24 +145,25 @@ def format_value(value: float, unit: str, digits: int | None = None) -> str:
     name = "" if UNITS[unit].silent else unit
     if number == 0:
         return f"0{name}"
-    exponent = 3 * (number.adjusted() // 3) if unit and UNITS[unit].prefixes else 0
-    if exponent not in _PREFIX_OF or abs(number.adjusted()) > 30:
-        return f"{number.normalize()!s}{name}"
+    powers = (0, *(PREFIXES[prefix] for prefix in UNITS[unit].prefixes if unit))
+    exponent = min(max(3 * (number.adjusted() // 3), min(powers)), max(powers))
     mantissa = f"{number.scaleb(-exponent):f}"
+    if len(mantissa) > 30:
+        return f"{number.normalize()}{name}"
     if "." in mantissa:
         mantissa = mantissa.rstrip("0").rstrip(".")
     return f"{mantissa}{_PREFIX_OF[exponent]}{name}"
 
 
 def shown(raw: object) -> str:
-    """How a fault quotes what was found: texts in quotes, truth values as TOML writes them, tables by name."""
+    """How a fault quotes what was found: as TOML writes it, tables and lists by name."""
     if isinstance(raw, bool):
         return "true" if raw else "false"
     if isinstance(raw, dict):
         return "a table"
     if isinstance(raw, list):
-        return "a list"
-    text = repr(raw)
+        return "a list" if raw else "an empty list"
+    text = str(raw) if isinstance(raw, datetime.date | datetime.time) else repr(raw)
     return text if len(text) <= 60 else text[:57] + "..."
 
 
@@ -192,16 +187,20 @@ def _literal(raw: str, unit: str, place: str) -> float:
     text = raw.strip()
     rule = UNITS[unit]
     code = _CODE.fullmatch(text)
-    if code and code.group(2) in rule.code and (code.group(1) or code.group(3)):
+    if code and (code.group(1) or code.group(3)):
         whole, letter, part = code.groups()
-        return float(f"{whole or 0}.{part or 0}e{rule.code[letter]}")
+        if letter in rule.code:
+            return float(f"{whole or 0}.{part or 0}e{rule.code[letter]}")
+        # Without digits behind it only R or L must be a code's; other letters may be a prefix or a unit.
+        if (part or letter in "RL") and any(letter in other.code for other in UNITS.values()):
+            raise _unreadable(f"{shown(raw)} is a letter code that does not go with {unit or 'numbers'}", unit, place)
     match = _NUMBER.fullmatch(text)
     if match is None:
         raise _unreadable(f"{shown(raw)} is not a value", unit, place)
     mantissa, exponent, rest = match.groups()
     power = _power(rest, unit)
     if power is None:
-        raise _unreadable(f"{shown(raw)} {_complaint(text, rest, unit)}", unit, place)
+        raise _unreadable(f"{shown(raw)} {_complaint(rest, unit)}", unit, place)
     if power and exponent and rest not in rule.spellings:
         raise _unreadable(f"{shown(raw)} has both an exponent and a prefix", unit, place)
     return float(f"{mantissa}e{int(exponent or 0) + power}")
@@ -214,25 +213,24 @@ def _power(rest: str, unit: str) -> int | None:
         return 0
     if rest in rule.spellings:
         return rule.spellings[rest]
-    if not rule.prefixes:
+    spelling = rest[1:]
+    if spelling and spelling not in rule.spellings:
         return None
-    # `K` is kilo where the letter code has it (resistors); elsewhere it would be kelvin.
-    prefix = PREFIXES.get(rest[0], 3 if rest[0] == "K" and "K" in rule.code else None)
-    if prefix is None:
+    # Both micro signs are `u`; `K` is kilo where the letter code has it (resistors), elsewhere it would be kelvin.
+    prefix = "k" if rest[0] == "K" and "K" in rule.code else _PREFIX_OF.get(PREFIXES.get(rest[0], 0), "")
+    if not prefix or prefix not in rule.prefixes:
         return None
-    if rest[1:] == "":
-        return prefix
-    return prefix + rule.spellings[rest[1:]] if rest[1:] in rule.spellings else None
+    return PREFIXES[prefix] + rule.spellings.get(spelling, 0)
 
 
-def _complaint(text: str, rest: str, unit: str) -> str:
+def _complaint(rest: str, unit: str) -> str:
+    """What is wrong with a text that is a number and something else."""
     for other, rule in UNITS.items():
         named = [spelling for spelling in rule.spellings if spelling and rest.endswith(spelling)]
         if other != unit and named and _power(rest, other) is not None:
             return f"has the unit {named[0]}" + (f", not {unit}" if unit else "; this is a plain number")
-    code = _CODE.fullmatch(text)
-    if code and any(code.group(2) in rule.code for rule in UNITS.values()):
-        return f"is a letter code that does not go with {unit or 'a plain number'}"
+    if rest and rest[0] in PREFIXES and (rest[1:] == "" or rest[1:] in UNITS[unit].spellings):
+        return f"has the prefix {rest[0]}, which does not go with {unit or 'a plain number'}"
     return f"has an unknown prefix or unit {rest!r}"
 
 
