@@ -107,7 +107,7 @@ class Program:
         return tuple(self.topology.unknowns[column] for column in self.plan.columns)
 
     def layout(self, numbers: Numbers) -> NDArray[np.float64]:
-        """A hit's numbers in the kernel's order: -G, cu, C, b, exponentials, tanhs, parameters, held voltages."""
+        """A hit's numbers in the kernel's order: -G, -cu, C, b, exponentials, tanhs, parameters, held voltages."""
         size = self.topology.size
         b = [0.0] * size
         for entry, row, held in self.held_entries:
@@ -115,7 +115,7 @@ class Program:
         return np.concatenate(
             [
                 -numbers.g[self.g_of_entry],
-                numbers.c[self.cu_of_entry],
+                -numbers.c[self.cu_of_entry],
                 numbers.c[self.c_of_entry],
                 b,
                 numbers.exponentials[:, 0],
