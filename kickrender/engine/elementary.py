@@ -8,7 +8,7 @@ range stated (tested against mpmath).
 from __future__ import annotations
 
 from kickrender.engine.compile import kernel
-from kickrender.engine.lanes import exponent, load, mantissa, pick_less, power_of_two, store
+from kickrender.engine.lanes import any_less, exponent, load, mantissa, pick_less, power_of_two, store
 
 _ROUND = 6755399441055744.0  # 1.5 * 2^52, see lanes.power_of_two
 _LOG2_E = 1.4426950408889634
@@ -47,18 +47,20 @@ def hyperbolic_tangent(x):
     """tanh x for any finite x.
 
     Below |x| = 1: Lambert's continued fraction x/(1 + s/(3 + s/(5 + ...))), s = x^2, cut after 19 and written as
-    x minus a small correction with one division. Above: 1 - 2/(e^2|x| + 1).
+    x minus a small correction with one division. Above: 1 - 2/(e^2|x| + 1), computed only if a lane needs it.
     """
     magnitude = pick_less(x, 0.0, 0.0 - x, x)
-    bounded = pick_less(magnitude, 20.0, magnitude, 20.0)  # tanh 20 rounds to 1
-    large = 1.0 - 2.0 / (exponential(bounded + bounded) + 1.0)
     z = pick_less(magnitude, 1.0, magnitude, 1.0)
     s = z * z
     # 3 + s/(5 + s/(7 + ...(17 + s/19))) = p/q
     p = 654729075.0 + s * (91891800.0 + s * (2837835.0 + s * (25740.0 + s * 55.0)))
     q = 218243025.0 + s * (16081065.0 + s * (289575.0 + s * (1430.0 + s)))
     small = z - z * (s * q / (p + s * q))
-    result = pick_less(magnitude, 1.0, small, large)
+    result = small
+    if any_less(1.0, magnitude):
+        bounded = pick_less(magnitude, 20.0, magnitude, 20.0)  # tanh 20 rounds to 1
+        large = 1.0 - 2.0 / (exponential(bounded + bounded) + 1.0)
+        result = pick_less(1.0, magnitude, large, small)
     return pick_less(x, 0.0, 0.0 - result, result)
 
 

@@ -2,7 +2,7 @@
 
 Hits of one topology are solved side by side. Every quantity then has one float per lane, and a kernel reads and
 writes them as one value of type `Lanes`: `load(array, start, width)` takes `len(width)` neighbouring floats,
-`+ - * /` work lane by lane, `store` puts them back. `width` is a tuple whose length is the number of lanes, so
+`+ - * /` work lane by lane, `store` puts them back; `gather` takes floats from anywhere. `width` is a tuple whose length is the number of lanes, so
 that the compiler knows it and one source serves one lane and many. Each lane's arithmetic is plain IEEE 754
 double precision in the order written: a lane's bits never depend on its neighbours or on the width.
 
@@ -80,6 +80,24 @@ def _store(typing: Any, array: Any, start: Any, value: Any) -> Any:
 
 
 @intrinsic
+def _gather(typing: Any, array: Any, indices: Any, start: Any, width: Any) -> Any:
+    lanes = Lanes(width.count)
+
+    def generate(context: Any, builder: Any, signature: Any, arguments: Any) -> Any:
+        data = context.make_array(array)(context, builder, arguments[0]).data
+        places = context.make_array(indices)(context, builder, arguments[1]).data
+        first = context.cast(builder, arguments[2], signature.args[2], types.intp)
+        value = ir.Constant(_llvm_type(lanes.count), ir.Undefined)
+        for lane in range(lanes.count):
+            place = builder.load(builder.gep(places, [builder.add(first, ir.Constant(ir.IntType(64), lane))]))
+            element = builder.load(builder.gep(data, [builder.zext(place, ir.IntType(64))]))
+            value = builder.insert_element(value, element, ir.Constant(ir.IntType(32), lane))
+        return value
+
+    return lanes(array, indices, start, width), generate
+
+
+@intrinsic
 def _spread_float(typing: Any, value: Any, width: Any) -> Any:
     def generate(context: Any, builder: Any, signature: Any, arguments: Any) -> Any:
         return _spread(builder, arguments[0], value, width.count)
@@ -98,6 +116,21 @@ def _pick_less(typing: Any, a: Any, b: Any, yes: Any, no: Any) -> Any:
         return builder.select(builder.fcmp_ordered("<", a_, b_), yes_, no_)
 
     return lanes(a, b, yes, no), generate
+
+
+@intrinsic
+def _any_less(typing: Any, a: Any, b: Any) -> Any:
+    lanes = next(kind for kind in (a, b) if isinstance(kind, Lanes))
+
+    def generate(context: Any, builder: Any, signature: Any, arguments: Any) -> Any:
+        a_, b_ = (
+            _spread(builder, value, kind, lanes.count)
+            for value, kind in zip(arguments, signature.args, strict=True)
+        )
+        mask = builder.bitcast(builder.fcmp_unordered("<", a_, b_), ir.IntType(lanes.count))
+        return builder.icmp_unsigned("!=", mask, ir.Constant(ir.IntType(lanes.count), 0))
+
+    return types.boolean(a, b), generate
 
 
 def _bitwise(name: str, recipe: Any) -> Any:
@@ -182,6 +215,10 @@ def _plain_store(array: Any, start: int, value: Any) -> None:
     array[int(start) : int(start) + value.size] = value
 
 
+def _plain_gather(array: Any, indices: Any, start: int, width: tuple[int, ...]) -> Any:
+    return array[indices[int(start) : int(start) + len(width)]]
+
+
 def _plain_power_of_two(shifted: Any) -> Any:
     return ((shifted.view(np.int64) << 52) + (1023 << 52)).view(np.float64)
 
@@ -195,7 +232,7 @@ def _plain_exponent(value: Any) -> Any:
 
 
 if config.DISABLE_JIT:
-    load, store = _plain_load, _plain_store
+    load, store, gather = _plain_load, _plain_store, _plain_gather
     power_of_two, mantissa, exponent = _plain_power_of_two, _plain_mantissa, _plain_exponent
 
     def spread(value: float, width: tuple[int, ...]) -> Any:
@@ -206,6 +243,11 @@ if config.DISABLE_JIT:
         """Lane by lane: `yes` where a < b, else `no` (also where either is not a number)."""
         return np.where(a < b, yes, no)
 
+    def any_less(a: Any, b: Any) -> Any:
+        """Whether a < b in any lane, or either is not a number there."""
+        return bool(np.any(~(a >= b)))
+
 else:
-    load, store, spread, pick_less = _load, _store, _spread_float, _pick_less
+    load, store, gather, spread = _load, _store, _gather, _spread_float
+    pick_less, any_less = _pick_less, _any_less
     power_of_two, mantissa, exponent = _power_of_two, _mantissa, _exponent

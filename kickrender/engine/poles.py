@@ -9,7 +9,7 @@ from scipy import linalg
 
 from kickrender.circuit.records import ResolvedCircuit
 from kickrender.engine import stepper
-from kickrender.engine.lanes import FLAT
+from kickrender.engine.lanes import FLAT, PADDING
 from kickrender.engine.plan import Plan
 from kickrender.engine.program import build_program
 from kickrender.engine.solve import rest_state
@@ -76,7 +76,7 @@ def linearised(circuit: ResolvedCircuit) -> tuple[np.ndarray, np.ndarray, Topolo
     vectors[code.stride + code.inputs :][: code.known - code.inputs] = layout[code.n_held :]
     volts = np.array([state[name] for name in topology.inputs])
     stepper.matrix_at(
-        code, layout, coefficients, vectors, 0.0, np.zeros(1), volts, np.zeros(code.inputs), np.zeros(3 * code.inputs)
+        code, np.append(layout, np.zeros(PADDING)), coefficients, vectors, 0.0, np.zeros(1), volts, np.zeros(code.inputs), np.zeros(3 * code.inputs)
     )
     matrix, rates = np.zeros((2, topology.size, topology.size))
     first = code.g + 2 + code.cu + code.ch

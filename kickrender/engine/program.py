@@ -85,7 +85,7 @@ class Code(NamedTuple):
     exp_minus: Indices
     tanh_plus: Indices
     tanh_minus: Indices
-    tanh_own: Indices
+    tanh_own: Indices  # the last five padded with zeros to a multiple of lanes.PADDING
 
 
 @dataclass(frozen=True, eq=False)
@@ -295,11 +295,11 @@ def build_program(topology: Topology, plan: Plan) -> Program:
         input_slope=_indices([(row, s, column - stride) for row, column, s, _ in derivatives if column >= stride], 3),
         input_sign=np.array([sign for _, column, _, sign in derivatives if column >= stride], dtype=np.float64),
         input_cu=_indices([(row, i, source) for i, (row, source) in enumerate(cu_at)], 3),
-        exp_plus=_indices([p for p, _ in exponentials]),
-        exp_minus=_indices([m for _, m in exponentials]),
-        tanh_plus=_indices([nets[0] for nets in tanhs]),
-        tanh_minus=_indices([nets[1] for nets in tanhs]),
-        tanh_own=_indices([nets[2] for nets in tanhs]),
+        exp_plus=_padded([p for p, _ in exponentials]),
+        exp_minus=_padded([m for _, m in exponentials]),
+        tanh_plus=_padded([nets[0] for nets in tanhs]),
+        tanh_minus=_padded([nets[1] for nets in tanhs]),
+        tanh_own=_padded([nets[2] for nets in tanhs]),
     )
     return Program(
         topology,
@@ -313,9 +313,8 @@ def build_program(topology: Topology, plan: Plan) -> Program:
     )
 
 
-def padded(rows: int, lanes: int) -> int:
-    """Length of a flat array of `rows` rows, rounded up for passes of lanes.PADDING floats."""
-    return max(1, -(-rows * lanes // PADDING)) * PADDING
+def _padded(values: list[int]) -> Indices:
+    return _indices(values + [0] * (-len(values) % PADDING))
 
 
 def _indices(values: object, columns: int = 0) -> Indices:

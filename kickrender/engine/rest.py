@@ -42,7 +42,7 @@ def settle(code, hit_numbers, hit_inputs, hit_x, results, worst, work_w, work_f)
     work_w, work_f : (size, size) and (code.coefficients,); scratch.
     """
     size = code.size
-    numbers = np.zeros(code.numbers)
+    numbers = np.zeros(code.numbers + len(FLAT))
     vectors = np.zeros(code.vectors + len(FLAT))
     arguments = np.zeros(code.exponentials + len(FLAT))
     before = np.zeros(code.exponentials + len(FLAT))
@@ -114,7 +114,7 @@ def settle(code, hit_numbers, hit_inputs, hit_x, results, worst, work_w, work_f)
 @kernel
 def _set_sources(code, hit_numbers, inputs, level, numbers, vectors, coefficients):
     """Load one hit's numbers with all its sources scaled by `level`; no capacitor current, no factors."""
-    numbers[:] = hit_numbers
+    numbers[: code.numbers] = hit_numbers
     vectors[:] = 0.0
     coefficients[:] = 0.0
     coefficients[: code.g] = hit_numbers[: code.g]
@@ -134,7 +134,7 @@ def _evaluate(code, state, coefficients):
     numbers, vectors, arguments, before, exp_slopes, exp_values, tanhs, slopes, rate, x, dx = state
     for row in range(code.size):
         vectors[row] = x[row]
-    evaluate_devices(code, numbers, vectors, arguments, exp_slopes, exp_values, tanhs, slopes, LONE)
+    evaluate_devices(code, numbers, vectors, arguments, exp_slopes, exp_values, tanhs, slopes, True, LONE)
     residual(code, numbers, coefficients, vectors, rate, spread(0.0, LONE), LONE)
 
 

@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 
 from kickrender.circuit.records import ResolvedCircuit
 from kickrender.engine import rest, stepper
-from kickrender.engine.lanes import LONE
+from kickrender.engine.lanes import LONE, PADDING
 from kickrender.engine.method import RODAS5P
 from kickrender.engine.outcome import NAME_OF_STATUS, OUTCOMES
 from kickrender.engine.plan import Plan, choose, plan_for
@@ -370,7 +370,7 @@ def _matrix_at(program: Program, hit: _Hit, run: _Run) -> NDArray[np.float64]:
     segment = int(np.searchsorted(hit.segments.end, run.t, side="right").clip(0, hit.segments.end.size - 1))
     start = hit.segments.end[segment - 1] if segment else 0.0
     set_now = (np.full(1, start), hit.segments.volts[segment].copy(), hit.segments.slope[segment].copy())
-    stepper.matrix_at(code, layout, coefficients, vectors, run.t, *set_now, hit.segments.sines.ravel().copy())
+    stepper.matrix_at(code, np.append(layout, np.zeros(PADDING)), coefficients, vectors, run.t, *set_now, hit.segments.sines.ravel().copy())
     first = code.g + 2 + code.cu + code.ch
     matrix = np.zeros((size, size))
     for entry, (row, column) in enumerate(program.pattern):

@@ -8,10 +8,10 @@ from __future__ import annotations
 
 import numpy as np
 
-from kickrender.engine import laws
 from kickrender.engine.compile import kernel
 from kickrender.engine.elementary import exponential, hyperbolic_tangent, logarithm, sine_of_turns
-from kickrender.engine.lanes import FLAT, LONE, load, pick_less, spread, store
+from kickrender.engine.lanes import FLAT, LONE, gather, load, pick_less, spread, store
+from kickrender.engine.laws import evaluate as evaluate_laws
 from kickrender.engine.method import RODAS5P
 
 STAGES = RODAS5P.c.size
@@ -34,31 +34,47 @@ FREE, IDLE = -1, -2  # lanes without a hit
 
 
 @kernel
-def evaluate_devices(code, numbers, vectors, arguments, exp_slopes, exp_values, tanhs, slopes, width):
-    """Outputs (in `vectors`) and slopes of all devices at the voltages in `vectors`; changed in place.
+def evaluate_devices(code, numbers, vectors, arguments, exp_slopes, exp_values, tanhs, slopes, with_slopes, width):
+    """Outputs (in `vectors`) and, if asked, slopes of all devices at the voltages in `vectors`; in place.
 
-    The exponentials of all junctions and limits are evaluated together, in passes over flat memory.
+    The exponentials of all junctions and limits are evaluated together, in passes over flat memory. A lone lane's
+    voltages go into these passes straight from where they are: written one by one and read back as a block they
+    would hold the processor up.
     """
     lanes = len(width)
     scale, offset = code.n_exponentials, code.n_exponentials + code.exponentials
-    for e in range(code.exponentials):
-        v = load(vectors, code.exp_plus[e] * lanes, width) - load(vectors, code.exp_minus[e] * lanes, width)
-        x = v * load(numbers, (scale + e) * lanes, width) + load(numbers, (offset + e) * lanes, width)
-        store(arguments, e * lanes, x)
+    per_input, per_own = code.n_tanhs, code.n_tanhs + code.tanhs
+    if lanes > 1:
+        for e in range(code.exponentials):
+            v = load(vectors, code.exp_plus[e] * lanes, width) - load(vectors, code.exp_minus[e] * lanes, width)
+            x = v * load(numbers, (scale + e) * lanes, width) + load(numbers, (offset + e) * lanes, width)
+            store(arguments, e * lanes, x)
+        for k in range(code.tanhs):
+            v = load(vectors, code.tanh_plus[k] * lanes, width) - load(vectors, code.tanh_minus[k] * lanes, width)
+            own = load(vectors, code.tanh_own[k] * lanes, width) * load(numbers, (per_own + k) * lanes, width)
+            store(tanhs, k * lanes, v * load(numbers, (per_input + k) * lanes, width) - own)
     for start in range(0, code.exponentials * lanes, len(FLAT)):
-        x = load(arguments, start, FLAT)
+        if lanes == 1:
+            v = gather(vectors, code.exp_plus, start, FLAT) - gather(vectors, code.exp_minus, start, FLAT)
+            x = v * load(numbers, scale + start, FLAT) + load(numbers, offset + start, FLAT)
+            store(arguments, start, x)
+        else:
+            x = load(arguments, start, FLAT)
         bounded = pick_less(_HIGHEST_ARGUMENT, x, _HIGHEST_ARGUMENT, x)
         slope = exponential(bounded)
         store(exp_slopes, start, slope)
         store(exp_values, start, slope + slope * (x - bounded))
-    per_input, per_own = code.n_tanhs, code.n_tanhs + code.tanhs
-    for k in range(code.tanhs):
-        v = load(vectors, code.tanh_plus[k] * lanes, width) - load(vectors, code.tanh_minus[k] * lanes, width)
-        own = load(vectors, code.tanh_own[k] * lanes, width) * load(numbers, (per_own + k) * lanes, width)
-        store(tanhs, k * lanes, v * load(numbers, (per_input + k) * lanes, width) - own)
     for start in range(0, code.tanhs * lanes, len(FLAT)):
-        store(tanhs, start, hyperbolic_tangent(load(tanhs, start, FLAT)))
-    laws.evaluate(code.spans, numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, width)
+        if lanes == 1:
+            v = gather(vectors, code.tanh_plus, start, FLAT) - gather(vectors, code.tanh_minus, start, FLAT)
+            own = gather(vectors, code.tanh_own, start, FLAT) * load(numbers, per_own + start, FLAT)
+            x = v * load(numbers, per_input + start, FLAT) - own
+        else:
+            x = load(tanhs, start, FLAT)
+        store(tanhs, start, hyperbolic_tangent(x))
+    evaluate_laws(
+        code.spans, numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, with_slopes, width
+    )
 
 
 @kernel
@@ -241,7 +257,7 @@ def solve(
     lanes = len(width)
     hits = hit_numbers.shape[0]
     rows = code.stride * lanes
-    numbers = np.zeros(code.numbers * lanes)
+    numbers = np.zeros(code.numbers * lanes + len(FLAT))
     coefficients = np.zeros(code.coefficients * lanes)
     vectors = np.zeros(code.vectors * lanes + len(FLAT))
     x = np.zeros(rows)
@@ -274,6 +290,8 @@ def solve(
     tried = np.zeros(lanes, np.int64)
     rejected = np.zeros(lanes, np.int64)
     streak = np.zeros(lanes, np.int64)  # rejections in a row
+    last_step = np.zeros(lanes)  # of the last accepted step, 0 after a break point
+    last_factor = np.zeros(lanes)
 
     first_c, first_ch = code.n_c, code.g + 2 + code.cu
     next_hit = 0
@@ -325,6 +343,7 @@ def solve(
                 tried[lane] = 0
                 rejected[lane] = 0
                 streak[lane] = 0
+                last_step[lane] = 0.0
             if running == 0:
                 break
 
@@ -371,7 +390,9 @@ def solve(
             set_inputs(
                 code, start_t + _C_TIME[stage] * step_s, now_t, now_v, now_slope, sines, vectors, second, width
             )
-            evaluate_devices(code, numbers, vectors, arguments, exp_slopes, exp_values, tanhs, slopes, width)
+            evaluate_devices(
+                code, numbers, vectors, arguments, exp_slopes, exp_values, tanhs, slopes, stage == 0, width
+            )
             if stage == 0:
                 assemble(code, coefficients, slopes, width)
                 store(growth, 0, factorise(code, coefficients, per_pivot, row_size, width))
@@ -432,12 +453,19 @@ def solve(
                         piece_c[hit, n, position, part] = dense[(5 * position + part) * lanes + lane]
                 pieces[lane] = n + 1
                 end = segment_end[hit, segment[lane]]
-                grow = min(factor[lane], _MOST_FACTOR)
+                # what the last two steps say about the trend: the error a step of the same size would have next
+                grow = factor[lane]
+                if last_step[lane] > 0.0:
+                    grow = min(grow, step[lane] / last_step[lane] * grow * grow / last_factor[lane])
+                grow = min(max(grow, _LEAST_FACTOR), _MOST_FACTOR)
+                last_step[lane] = step[lane]
+                last_factor[lane] = factor[lane]
                 if streak[lane] > 0:
                     grow = min(grow, 1.0)
                 streak[lane] = 0
                 if step[lane] == end - t[lane]:
                     t[lane] = end
+                    last_step[lane] = 0.0
                     if segment[lane] == segment_count[hit] - 1:
                         status = DONE
                     else:
@@ -503,5 +531,5 @@ def matrix_at(code, numbers, coefficients, vectors, time_s, segment_t, segment_v
     second = np.zeros(code.inputs)
     time = spread(time_s, LONE)
     set_inputs(code, time, segment_t, segment_v, segment_slope, sines, vectors, second, LONE)
-    evaluate_devices(code, numbers, vectors, arguments, exp_slopes, exp_values, tanhs, slopes, LONE)
+    evaluate_devices(code, numbers, vectors, arguments, exp_slopes, exp_values, tanhs, slopes, True, LONE)
     assemble(code, coefficients, slopes, LONE)

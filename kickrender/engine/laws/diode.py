@@ -45,16 +45,17 @@ def stamp(part: ResolvedPart, stamps: Stamps) -> None:
 
 
 @kernel
-def evaluate(span, numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, width):
+def evaluate(span, numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, with_slopes, width):
     """Current and conductance of every diode. [A], [S]
 
     span : (6,) this law's devices: count, then first row in `arguments` (and `exp_slopes`, `exp_values`), `tanhs`,
         `vectors` (where outputs go), `slopes` and `numbers` (parameters). Every row is len(width) floats of a flat
-        array. `vectors` and `slopes` are changed in place.
+        array. `vectors` and, where `with_slopes`, `slopes` are changed in place.
     """
     lanes = len(width)
     for k in range(span[0]):
         e = (span[1] + k) * lanes
         p = (span[5] + 2 * k) * lanes
         store(vectors, (span[3] + k) * lanes, load(numbers, p, width) * (load(exp_values, e, width) - 1.0))
-        store(slopes, (span[4] + k) * lanes, load(numbers, p + lanes, width) * load(exp_slopes, e, width))
+        if with_slopes:
+            store(slopes, (span[4] + k) * lanes, load(numbers, p + lanes, width) * load(exp_slopes, e, width))

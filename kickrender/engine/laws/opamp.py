@@ -61,20 +61,21 @@ def stamp(part: ResolvedPart, stamps: Stamps) -> None:
 
 
 @kernel
-def evaluate(span, numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, width):
+def evaluate(span, numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, with_slopes, width):
     """Rate of the output and its slopes. [V/s], [1/s]; arguments as in diode.evaluate."""
     lanes = len(width)
     for k in range(span[0]):
         e = (span[1] + 2 * k) * lanes
         p = (span[5] + 4 * k) * lanes
-        g = (span[4] + 4 * k) * lanes
         slew = load(numbers, p, width)
-        per_knee = load(numbers, p + 3 * lanes, width)
         t = load(tanhs, (span[2] + k) * lanes, width)
         limits = load(exp_values, e + lanes, width) - load(exp_values, e, width)
         store(vectors, (span[3] + k) * lanes, slew * (t + limits))
-        open_loop = 1.0 - t * t
-        store(slopes, g, load(numbers, p + lanes, width) * open_loop)
-        store(slopes, g + lanes, load(numbers, p + 2 * lanes, width) * open_loop)
-        store(slopes, g + 2 * lanes, per_knee * load(exp_slopes, e, width))
-        store(slopes, g + 3 * lanes, per_knee * load(exp_slopes, e + lanes, width))
+        if with_slopes:
+            g = (span[4] + 4 * k) * lanes
+            per_knee = load(numbers, p + 3 * lanes, width)
+            open_loop = 1.0 - t * t
+            store(slopes, g, load(numbers, p + lanes, width) * open_loop)
+            store(slopes, g + lanes, load(numbers, p + 2 * lanes, width) * open_loop)
+            store(slopes, g + 2 * lanes, per_knee * load(exp_slopes, e, width))
+            store(slopes, g + 3 * lanes, per_knee * load(exp_slopes, e + lanes, width))

@@ -60,7 +60,7 @@ def stamp(part: ResolvedPart, stamps: Stamps) -> None:
 
 
 @kernel
-def evaluate(span, numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, width):
+def evaluate(span, numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, with_slopes, width):
     """Collector and base current and their four slopes. [A], [S]; arguments as in diode.evaluate."""
     lanes = len(width)
     for k in range(span[0]):
@@ -68,24 +68,25 @@ def evaluate(span, numbers, arguments, exp_slopes, exp_values, tanhs, vectors, s
         r = f + lanes
         p = (span[5] + 6 * k) * lanes
         o = (span[3] + 2 * k) * lanes
-        g = (span[4] + 4 * k) * lanes
         i_s = load(numbers, p, width)
         i_sr = load(numbers, p + lanes, width)
         per_forward_gain = load(numbers, p + 2 * lanes, width)
         per_reverse_gain = load(numbers, p + 3 * lanes, width)
-        per_scale = load(numbers, p + 4 * lanes, width)
         scale_per_early = load(numbers, p + 5 * lanes, width)
         i_f = i_s * (load(exp_values, f, width) - 1.0)
         i_r = i_sr * (load(exp_values, r, width) - 1.0)
-        g_f = i_s * per_scale * load(exp_slopes, f, width)
-        g_r = i_sr * per_scale * load(exp_slopes, r, width)
         early = 1.0 - load(arguments, r, width) * scale_per_early
         transport = i_f - i_r
         i_r_base = i_r * per_reverse_gain
-        g_r_base = g_r * per_reverse_gain
         store(vectors, o, transport * early - i_r_base)
         store(vectors, o + lanes, i_f * per_forward_gain + i_r_base)
-        store(slopes, g, g_f * early)
-        store(slopes, g + lanes, 0.0 - g_r * early - transport * (scale_per_early * per_scale) - g_r_base)
-        store(slopes, g + 2 * lanes, g_f * per_forward_gain)
-        store(slopes, g + 3 * lanes, g_r_base)
+        if with_slopes:
+            g = (span[4] + 4 * k) * lanes
+            per_scale = load(numbers, p + 4 * lanes, width)
+            g_f = i_s * per_scale * load(exp_slopes, f, width)
+            g_r = i_sr * per_scale * load(exp_slopes, r, width)
+            g_r_base = g_r * per_reverse_gain
+            store(slopes, g, g_f * early)
+            store(slopes, g + lanes, 0.0 - g_r * early - transport * (scale_per_early * per_scale) - g_r_base)
+            store(slopes, g + 2 * lanes, g_f * per_forward_gain)
+            store(slopes, g + 3 * lanes, g_r_base)
