@@ -79,7 +79,7 @@ def linearised(circuit: ResolvedCircuit) -> tuple[np.ndarray, np.ndarray, Topolo
         code, np.append(layout, np.zeros(PADDING)), coefficients, vectors, 0.0, np.zeros(1), volts, np.zeros(code.inputs), np.zeros(3 * code.inputs)
     )
     matrix, rates = np.zeros((2, topology.size, topology.size))
-    first = code.g + 2 + code.cu + code.ch
+    first = code.first_w
     for entry, (row, column) in enumerate(program.pattern):
         matrix[row, column] = coefficients[first + entry]
     for index, entry in enumerate(program.c_of_entry):

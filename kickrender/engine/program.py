@@ -2,14 +2,15 @@
 
 Everything a hit needs lies in two flat blocks of rows (a row is one float per lane). The `coefficients` block:
 
-    g | signs +1 -1 | cu | ch | w          entries of -G, constants, input capacitances, C/h, and W with its fill
+    g | +1 -1 0 | cu | ch | w              entries of -G, constants, input capacitances, C/h, and W with its fill
 
 and the `vectors` block:
 
     v | outputs | zc | du | y              all voltages (unknowns, inputs, held), device outputs, sum_j c_ij k_j,
                                            slopes of the inputs, right-hand side after forward substitution
 
-so that the right-hand side of a stage and its forward substitution are one sparse dot product per row.
+so that the right-hand side of a stage and its forward substitution are one sparse dot product per row, taken in
+two sums over alternate terms (half the chain of dependent additions).
 A hit's own numbers come as one array in the order of `sections`.
 """
 
@@ -41,8 +42,11 @@ class Code(NamedTuple):
     slopes: int
     g: int  # first rows and counts of the sections
     cu: int
+    first_cu: int  # row of section cu in `coefficients`; likewise below
     ch: int
+    first_ch: int
     w: int
+    first_w: int
     coefficients: int
     v_outputs: int
     v_zc: int
@@ -59,7 +63,7 @@ class Code(NamedTuple):
     numbers: int
     is_sine: NDArray[np.bool_]
     spans: NDArray[np.int64]  # (laws, 6): count, first exponential, tanh, output (in vectors), slope, number
-    row_start: Indices  # right-hand side and forward substitution: row k uses terms row_start[k] .. row_start[k + 1]
+    row_start: Indices  # right-hand side and forward substitution: row k uses terms row_start[k] .. row_start[k + 1], an even number
     row_coefficient: Indices
     row_vector: Indices
     back_start: Indices  # back substitution
@@ -205,7 +209,7 @@ def build_program(topology: Topology, plan: Plan) -> Program:
         update_start.append(len(update))
 
     # sections
-    g, signs, cu = 0, len(g_kept), len(g_kept) + 2
+    signs, cu = len(g_kept), len(g_kept) + 3
     ch = cu + len(cu_kept)
     w = ch + len(c_kept)
     v_outputs = stride + known
@@ -216,7 +220,7 @@ def build_program(topology: Topology, plan: Plan) -> Program:
     # one dot product per row
     terms: dict[int, list[tuple[int, int]]] = defaultdict(list)
     for index, (row, column) in enumerate(g_at):
-        terms[row].append((g + index, column))
+        terms[row].append((index, column))
     for row, output, sign in flows:
         terms[row].append((signs if sign > 0 else signs + 1, v_outputs + output))
     for index, (row, column) in enumerate(c_at):
@@ -228,11 +232,12 @@ def build_program(topology: Topology, plan: Plan) -> Program:
             terms[row].append((w + w_at[row, column], v_y + column))
     row_start, flat = [0], []
     for row in range(size):
-        flat += terms[row]
+        flat += terms[row] + [(signs + 2, 0)] * (len(terms[row]) % 2)
         row_start.append(len(flat))
     back_start, back = [0], []
     for row in range(size):
-        back += [(w_at[row, column], column) for column in sorted(by_row[row]) if column > row]
+        # the unknown found last is used last
+        back += [(w_at[row, column], column) for column in sorted(by_row[row], reverse=True) if column > row]
         back_start.append(len(back))
     w_start = [0]
     for row in range(size):
@@ -255,8 +260,11 @@ def build_program(topology: Topology, plan: Plan) -> Program:
         slopes=slopes,
         g=len(g_kept),
         cu=len(cu_kept),
+        first_cu=cu,
         ch=len(c_kept),
+        first_ch=ch,
         w=len(pattern),
+        first_w=w,
         coefficients=w + len(pattern),
         v_outputs=v_outputs,
         v_zc=v_zc,

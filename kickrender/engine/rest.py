@@ -146,7 +146,7 @@ def _newton(code, state, matrix, coefficients, per_pseudo_step, most):
     """
     numbers, vectors, arguments, before, exp_slopes, exp_values, tanhs, slopes, rate, x, dx = state
     size = code.size
-    first = code.g + 2 + code.cu + code.ch
+    first = code.first_w
     last = np.inf
     for iteration in range(most):
         _evaluate(code, state, coefficients)
@@ -154,7 +154,7 @@ def _newton(code, state, matrix, coefficients, per_pseudo_step, most):
             before[e] = arguments[e]
         for p in range(code.ch):
             # assemble() divides by gamma; a constant factor of the pseudo step does not matter
-            coefficients[code.g + 2 + code.cu + p] = numbers[code.n_c + p] * per_pseudo_step
+            coefficients[code.first_ch + p] = numbers[code.n_c + p] * per_pseudo_step
         assemble(code, coefficients, slopes, LONE)
         matrix[:] = 0.0
         for row in range(size):
@@ -164,7 +164,7 @@ def _newton(code, state, matrix, coefficients, per_pseudo_step, most):
         for e in range(code.w):
             coefficients[first + e] = 0.0
         for p in range(code.ch):
-            coefficients[code.g + 2 + code.cu + p] = 0.0
+            coefficients[code.first_ch + p] = 0.0
         if not solve_dense(matrix, dx):
             dx[0] = np.nan
             return False, iteration + 1

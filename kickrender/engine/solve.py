@@ -364,14 +364,14 @@ def _matrix_at(program: Program, hit: _Hit, run: _Run) -> NDArray[np.float64]:
     layout = program.layout(hit.numbers)
     coefficients, vectors = np.zeros(code.coefficients), np.zeros(code.vectors + 8)
     coefficients[: code.g] = layout[: code.g]
-    coefficients[code.g + 2 + code.cu :][: code.ch] = layout[code.n_c : code.n_b] / run.h
+    coefficients[code.first_ch :][: code.ch] = layout[code.n_c : code.n_b] / run.h
     vectors[:size] = run.x
     vectors[code.stride + code.inputs :][: code.known - code.inputs] = layout[code.n_held :]
     segment = int(np.searchsorted(hit.segments.end, run.t, side="right").clip(0, hit.segments.end.size - 1))
     start = hit.segments.end[segment - 1] if segment else 0.0
     set_now = (np.full(1, start), hit.segments.volts[segment].copy(), hit.segments.slope[segment].copy())
     stepper.matrix_at(code, np.append(layout, np.zeros(PADDING)), coefficients, vectors, run.t, *set_now, hit.segments.sines.ravel().copy())
-    first = code.g + 2 + code.cu + code.ch
+    first = code.first_w
     matrix = np.zeros((size, size))
     for entry, (row, column) in enumerate(program.pattern):
         matrix[program.plan.rows[row], program.plan.columns[column]] = coefficients[first + entry]

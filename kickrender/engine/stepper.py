@@ -107,13 +107,13 @@ def set_inputs(code, time, segment_t, segment_v, segment_slope, sines, vectors, 
 def assemble(code, coefficients, slopes, width):
     """W = C/(gamma h) + G + device slopes into its section of `coefficients`, whose section ch holds C/h."""
     lanes = len(width)
-    first = code.g + 2 + code.cu + code.ch
+    first = code.first_w
     nothing = spread(0.0, width)
     for e in range(code.w):
         store(coefficients, (first + e) * lanes, nothing)
     for p in range(code.assemble_c.shape[0]):
         at = (first + code.assemble_c[p, 0]) * lanes
-        c = load(coefficients, (code.g + 2 + code.cu + code.assemble_c[p, 1]) * lanes, width)
+        c = load(coefficients, (code.first_ch + code.assemble_c[p, 1]) * lanes, width)
         store(coefficients, at, load(coefficients, at, width) + c * _PER_GAMMA)
     for p in range(code.assemble_g.shape[0]):
         at = (first + code.assemble_g[p, 0]) * lanes
@@ -131,7 +131,7 @@ def factorise(code, coefficients, per_pivot, row_size, width):
     Returns the largest multiplier between rows scaled to equal size, one per lane; not a number if one is not.
     """
     lanes = len(width)
-    first = code.g + 2 + code.cu + code.ch
+    first = code.first_w
     for row in range(code.size):
         size = spread(0.0, width)
         for e in range(code.w_start[row], code.w_start[row + 1]):
@@ -178,27 +178,33 @@ def time_derivative(code, coefficients, slopes, vectors, second, rate, width):
         store(rate, at, load(rate, at, width) - slope * du)
     for p in range(code.input_cu.shape[0]):
         at = code.input_cu[p, 0] * lanes
-        farad = load(coefficients, (code.g + 2 + code.input_cu[p, 1]) * lanes, width)
+        farad = load(coefficients, (code.first_cu + code.input_cu[p, 1]) * lanes, width)
         store(rate, at, load(rate, at, width) + farad * load(second, code.input_cu[p, 2] * lanes, width))
 
 
 @kernel
 def residual(code, numbers, coefficients, vectors, rate, rate_weight, width):
-    """Right-hand side and forward substitution in one dot product per row, into section y of `vectors`."""
+    """Right-hand side and forward substitution in one dot product per row, into section y of `vectors`.
+
+    The terms of a row go by turns into two sums, so that fewer additions wait for one another.
+    """
     lanes = len(width)
     for row in range(code.size):
-        total = load(numbers, (code.n_b + row) * lanes, width) + rate_weight * load(rate, row * lanes, width)
-        for p in range(code.row_start[row], code.row_start[row + 1]):
+        total = load(numbers, (code.n_b + row) * lanes, width)
+        other = rate_weight * load(rate, row * lanes, width)
+        for p in range(code.row_start[row], code.row_start[row + 1], 2):
             a = load(coefficients, code.row_coefficient[p] * lanes, width)
             total = total + a * load(vectors, code.row_vector[p] * lanes, width)
-        store(vectors, (code.v_y + row) * lanes, total)
+            a = load(coefficients, code.row_coefficient[p + 1] * lanes, width)
+            other = other + a * load(vectors, code.row_vector[p + 1] * lanes, width)
+        store(vectors, (code.v_y + row) * lanes, total + other)
 
 
 @kernel
 def back_substitute(code, coefficients, per_pivot, vectors, solution, start, width):
     """Solve U k = y; k goes to row `start` and on of `solution`."""
     lanes = len(width)
-    first = code.g + 2 + code.cu + code.ch
+    first = code.first_w
     for down in range(code.size):
         row = code.size - 1 - down
         total = load(vectors, (code.v_y + row) * lanes, width)
@@ -293,7 +299,6 @@ def solve(
     last_step = np.zeros(lanes)  # of the last accepted step, 0 after a break point
     last_factor = np.zeros(lanes)
 
-    first_c, first_ch = code.n_c, code.g + 2 + code.cu
     next_hit = 0
     for lane in range(lanes):
         coefficients[code.g * lanes + lane] = 1.0
@@ -319,7 +324,7 @@ def solve(
                 for row in range(code.g):
                     coefficients[row * lanes + lane] = hit_numbers[hit, row]
                 for row in range(code.cu):
-                    coefficients[(code.g + 2 + row) * lanes + lane] = hit_numbers[hit, code.g + row]
+                    coefficients[(code.first_cu + row) * lanes + lane] = hit_numbers[hit, code.g + row]
                 for row in range(code.known - code.inputs):
                     vectors[(code.stride + code.inputs + row) * lanes + lane] = hit_numbers[hit, code.n_held + row]
                 for row in range(code.size):
@@ -361,9 +366,7 @@ def solve(
         start_t = load(t, 0, width)
         per_step = 1.0 / step_s
         for p in range(code.ch):
-            store(
-                coefficients, (first_ch + p) * lanes, load(numbers, (first_c + p) * lanes, width) * per_step
-            )
+            store(coefficients, (code.first_ch + p) * lanes, load(numbers, (code.n_c + p) * lanes, width) * per_step)
         for stage in range(STAGES):
             if stage == 0:
                 for p in range(0, code.size * lanes, len(FLAT)):
