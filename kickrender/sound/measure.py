@@ -29,7 +29,7 @@ CENT_DIGITS = 2
 OFFSET_DIGITS = 9
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, kw_only=True)
 class Measurements:
     """What was measured of one sound; None where the sound has no such measurement (silence has few).
 
@@ -45,17 +45,17 @@ class Measurements:
     offset : mean of the last 100 ms, weighted by a raised cosine; full scale 1. [1e-9]
     """
 
-    peak_dbfs: float | None
-    true_peak_dbtp: float | None
-    momentary_lufs: float | None
-    integrated_lufs: float | None
-    start_hz: float | None
-    settled_hz: float | None
-    note: str | None
-    cents: float | None
-    decay_s: float | None
-    attack_s: float | None
-    centroid_hz: float | None
+    peak_dbfs: float | None = None
+    true_peak_dbtp: float | None = None
+    momentary_lufs: float | None = None
+    integrated_lufs: float | None = None
+    start_hz: float | None = None
+    settled_hz: float | None = None
+    note: str | None = None
+    cents: float | None = None
+    decay_s: float | None = None
+    attack_s: float | None = None
+    centroid_hz: float | None = None
     length_s: float
     offset: float
 
@@ -83,7 +83,7 @@ def measure(samples: Floats, rate_hz: float, concert_pitch_hz: float = CONCERT_P
     length = _rounded(len(samples) / rate_hz, SECOND_DIGITS)
     peak = float(np.abs(samples).max())
     if peak == 0.0:
-        return Measurements(*[None] * 11, length_s=length, offset=0.0)
+        return Measurements(length_s=length, offset=0.0)
     heard = loudness(samples, rate_hz)
     tone = pitch(samples, rate_hz)
     settled = None if tone.settled_hz is None else significant(tone.settled_hz)
