@@ -27,8 +27,8 @@ from kickrender.errors import SolveError
 
 ENGINE_VERSION = "1"  # moves whenever a render's bytes may move
 
-DEFAULT_TOLERANCE = 1e-5  # error of one step, relative to a voltage
-ABSOLUTE_SHARE = 0.1  # volts (or amperes) below which the tolerance no longer shrinks with the value
+DEFAULT_TOLERANCE = 2e-6  # error of one step, relative to a voltage
+ABSOLUTE_SHARE = 0.3  # volts (or amperes) below which the tolerance no longer shrinks with the value
 SIDE_BY_SIDE = (0,) * 8  # lanes
 _BATCH = 64  # hits prepared at once: bounds memory
 _ROOM = 4000  # steps kept for any hit, and then per second of it
