@@ -24,7 +24,7 @@ from numba.core import config
 
 ENGINE_FOLDER = Path(__file__).resolve().parent
 PACKAGE_FOLDER = ENGINE_FOLDER.parent
-_IMPORT = re.compile(r"^ *from (kickrender[\w.]*) import ([\w, ]+)", re.MULTILINE)
+_IMPORT = re.compile(r"^ *from (kickrender[\w.]*) import (\([^)]*\)|[^\n#]+)", re.MULTILINE)
 
 
 def kernel(function: Callable[..., Any]) -> Callable[..., Any]:
@@ -57,9 +57,14 @@ def _with_imports(source: Path) -> set[Path]:
         found.add(path)
         for module, names in _IMPORT.findall(path.read_text(encoding="utf-8")):
             base = PACKAGE_FOLDER.parent.joinpath(*module.split("."))
-            for name in names.split(","):
-                inside = base / name.strip()  # `from package import module` brings the module, not the package
-                choices = (inside.with_suffix(".py"), inside / "__init__.py", base.with_suffix(".py"), base / "__init__.py")
+            for name in re.findall(r"\w+", names):
+                inside = base / name  # `from package import module` brings the module, not the package
+                choices = (
+                    inside.with_suffix(".py"),
+                    inside / "__init__.py",
+                    base.with_suffix(".py"),
+                    base / "__init__.py",
+                )
                 left += [file for file in choices if file.is_file()][:1]
     return found
 

@@ -124,8 +124,7 @@ def _any_less(typing: Any, a: Any, b: Any) -> Any:
 
     def generate(context: Any, builder: Any, signature: Any, arguments: Any) -> Any:
         a_, b_ = (
-            _spread(builder, value, kind, lanes.count)
-            for value, kind in zip(arguments, signature.args, strict=True)
+            _spread(builder, value, kind, lanes.count) for value, kind in zip(arguments, signature.args, strict=True)
         )
         mask = builder.bitcast(builder.fcmp_unordered("<", a_, b_), ir.IntType(lanes.count))
         return builder.icmp_unsigned("!=", mask, ir.Constant(ir.IntType(lanes.count), 0))

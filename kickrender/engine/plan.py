@@ -75,7 +75,9 @@ def choose(matrices: NDArray[np.float64]) -> Plan:
         lower = pattern[:, column] & rows_left
         upper = pattern[row] & columns_left
         factors = matrices[:, lower, column] / matrices[:, row, column][:, None]
-        matrices[np.ix_(range(len(matrices)), lower, upper)] -= factors[:, :, None] * matrices[:, row, upper][:, None, :]
+        matrices[np.ix_(range(len(matrices)), lower, upper)] -= (
+            factors[:, :, None] * matrices[:, row, upper][:, None, :]
+        )
         pattern[np.ix_(lower, upper)] = True
     return Plan(tuple(rows), tuple(columns))
 
@@ -84,7 +86,10 @@ def _typical_matrices(topology: Topology) -> NDArray[np.float64]:
     """W of usual part values, for short and long steps and with the devices off, weak, strong and mixed."""
     size = topology.size
     g, c = np.zeros((size, size)), np.zeros((size, size))
-    for entries, typical, matrix in ((topology.entries_g, topology.typical_g, g), (topology.entries_c, topology.typical_c, c)):
+    for entries, typical, matrix in (
+        (topology.entries_g, topology.typical_g, g),
+        (topology.entries_c, topology.typical_c, c),
+    ):
         for (row, column), value in zip(entries, typical, strict=True):
             if column < size:
                 matrix[row, column] += value

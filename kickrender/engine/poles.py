@@ -8,7 +8,7 @@ import numpy as np
 from scipy import linalg
 
 from kickrender.circuit.records import ResolvedCircuit
-from kickrender.engine import stepper
+from kickrender.engine.equations import matrix_at
 from kickrender.engine.lanes import FLAT, PADDING
 from kickrender.engine.plan import Plan
 from kickrender.engine.program import build_program
@@ -56,7 +56,11 @@ def poles(circuit: ResolvedCircuit) -> list[Pole]:
         if s.imag < -1e-9 * size or size == 0.0 or size > 1e11:
             continue
         paired = s.imag > 1e-9 * size
-        quality = -size / (2.0 * s.real) if paired and s.real != 0.0 else (np.copysign(0.5, -s.real) if not paired else np.inf)
+        quality = (
+            -size / (2.0 * s.real)
+            if paired and s.real != 0.0
+            else (np.copysign(0.5, -s.real) if not paired else np.inf)
+        )
         decay_s = np.log(1000.0) / -s.real if s.real != 0.0 else np.inf
         found.append(Pole(float(size / (2.0 * np.pi)), float(quality), float(decay_s)))
     return sorted(found, key=lambda pole: pole.frequency_hz)
@@ -75,8 +79,16 @@ def linearised(circuit: ResolvedCircuit) -> tuple[np.ndarray, np.ndarray, Topolo
     vectors[: code.size] = [state[name] for name in topology.unknowns]
     vectors[code.stride + code.inputs :][: code.known - code.inputs] = layout[code.n_held :]
     volts = np.array([state[name] for name in topology.inputs])
-    stepper.matrix_at(
-        code, np.append(layout, np.zeros(PADDING)), coefficients, vectors, 0.0, np.zeros(1), volts, np.zeros(code.inputs), np.zeros(3 * code.inputs)
+    matrix_at(
+        code,
+        np.append(layout, np.zeros(PADDING)),
+        coefficients,
+        vectors,
+        0.0,
+        np.zeros(1),
+        volts,
+        np.zeros(code.inputs),
+        np.zeros(3 * code.inputs),
     )
     matrix, rates = np.zeros((2, topology.size, topology.size))
     first = code.first_w

@@ -63,7 +63,7 @@ class Code(NamedTuple):
     numbers: int
     is_sine: NDArray[np.bool_]
     spans: NDArray[np.int64]  # (laws, 6): count, first exponential, tanh, output (in vectors), slope, number
-    row_start: Indices  # right-hand side and forward substitution: row k uses terms row_start[k] .. row_start[k + 1], an even number
+    row_start: Indices  # right-hand side: row k has terms row_start[k] .. row_start[k + 1], an even number
     row_coefficient: Indices
     row_vector: Indices
     back_start: Indices  # back substitution

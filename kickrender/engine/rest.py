@@ -16,7 +16,7 @@ import numpy as np
 from kickrender.engine.compile import kernel
 from kickrender.engine.elementary import logarithm
 from kickrender.engine.lanes import FLAT, LONE, load, spread, store
-from kickrender.engine.stepper import assemble, evaluate_devices, residual
+from kickrender.engine.equations import assemble, evaluate_devices, residual
 
 SETTLED, NOT_SETTLED = 0, 1
 

@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 
 from kickrender.circuit.records import ResolvedCircuit
 from kickrender.engine import rest, stepper
+from kickrender.engine.equations import matrix_at
 from kickrender.engine.lanes import LONE, PADDING
 from kickrender.engine.method import RODAS5P
 from kickrender.engine.outcome import NAME_OF_STATUS, OUTCOMES
@@ -163,9 +164,7 @@ def _settle(
     x = np.zeros((len(hits), code.size))
     results = np.zeros((len(hits), 3), dtype=np.int64)
     worst = np.zeros(len(hits))
-    rest.settle(
-        code, numbers, inputs, x, results, worst, np.zeros((code.size, code.size)), np.zeros(code.coefficients)
-    )
+    rest.settle(code, numbers, inputs, x, results, worst, np.zeros((code.size, code.size)), np.zeros(code.coefficients))
     errors = [
         None
         if results[i, 0] == rest.SETTLED
@@ -370,7 +369,15 @@ def _matrix_at(program: Program, hit: _Hit, run: _Run) -> NDArray[np.float64]:
     segment = int(np.searchsorted(hit.segments.end, run.t, side="right").clip(0, hit.segments.end.size - 1))
     start = hit.segments.end[segment - 1] if segment else 0.0
     set_now = (np.full(1, start), hit.segments.volts[segment].copy(), hit.segments.slope[segment].copy())
-    stepper.matrix_at(code, np.append(layout, np.zeros(PADDING)), coefficients, vectors, run.t, *set_now, hit.segments.sines.ravel().copy())
+    matrix_at(
+        code,
+        np.append(layout, np.zeros(PADDING)),
+        coefficients,
+        vectors,
+        run.t,
+        *set_now,
+        hit.segments.sines.ravel().copy(),
+    )
     first = code.first_w
     matrix = np.zeros((size, size))
     for entry, (row, column) in enumerate(program.pattern):

@@ -157,7 +157,10 @@ def _summed(targets: NDArray[np.int64], numbers: Sequence[float], count: int) ->
 def _spread(typical: Sequence[float]) -> list[float]:
     """The typical values, each four alike (one part) moved a little, so that none cancel by chance."""
     golden = 0.6180339887498949
-    return [value * (0.5 + (index // 4) * golden % 1.0) if abs(value) < 0.9 else value for index, value in enumerate(typical)]
+    return [
+        value * (0.5 + (index // 4) * golden % 1.0) if abs(value) < 0.9 else value
+        for index, value in enumerate(typical)
+    ]
 
 
 def _sorted(per_device: Sequence[tuple[str, Sequence[float]]], topology: Topology) -> NDArray[np.float64]:

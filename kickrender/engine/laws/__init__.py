@@ -28,5 +28,7 @@ LAWS = ("diode", "transistor", "opamp")
 def evaluate(spans, numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, with_slopes, width):
     """Outputs and slopes of every device; spans of shape (len(LAWS), 6), the rest as in diode.evaluate."""
     diode.evaluate(spans[0], numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, with_slopes, width)
-    transistor.evaluate(spans[1], numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, with_slopes, width)
+    transistor.evaluate(
+        spans[1], numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, with_slopes, width
+    )
     opamp.evaluate(spans[2], numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, with_slopes, width)

@@ -35,7 +35,12 @@ def stamp(part: ResolvedPart, stamps: Stamps) -> None:
             outputs=1,
             flows=((anode, 0, -1.0), (cathode, 0, 1.0)),
             slopes=1,
-            derivatives=((anode, anode, 0, 1.0), (anode, cathode, 0, -1.0), (cathode, anode, 0, -1.0), (cathode, cathode, 0, 1.0)),
+            derivatives=(
+                (anode, anode, 0, 1.0),
+                (anode, cathode, 0, -1.0),
+                (cathode, anode, 0, -1.0),
+                (cathode, cathode, 0, 1.0),
+            ),
             parameters=2,
             typical_slopes=((0.0,), (1e-6,), (1e-1,)),
         ),

@@ -23,9 +23,7 @@ def stamp(part: ResolvedPart, stamps: Stamps) -> None:
     """The rate of the output's own equation, in V/s."""
     assert part.model is not None
     model = part.model.values
-    plus, minus, out, high, low = (
-        part.terminals[role] for role in ("plus", "minus", "out", "rail_high", "rail_low")
-    )
+    plus, minus, out, high, low = (part.terminals[role] for role in ("plus", "minus", "out", "rail_high", "rail_low"))
     slew, w_t = model["slew_rate"], 2.0 * pi * model["gain_bandwidth"]
     row = stamps.own_equation(out)
     stamps.rate(row, out, 1.0, typical=1.0)
