@@ -76,7 +76,8 @@ def wiring_faults(wiring: Wiring) -> list[Fault]:
     faults += _output_faults(wiring)
     faults += [_lonely_fault(wiring, net) for net in lonely]
     faults += _ground_faults(wiring, driven, lonely)
-    return faults + _coil_faults(wiring, driven)
+    faults += _coil_loop_faults(wiring, driven)
+    return faults + _coil_net_faults(wiring, driven, lonely)
 
 
 def _pairs(part: Part, pairs: Pairs) -> Iterable[tuple[str, str]]:
@@ -164,16 +165,13 @@ def _ground_faults(wiring: Wiring, driven: Iterable[str], lonely: Sequence[str])
     return faults
 
 
-def _coil_faults(wiring: Wiring, driven: Iterable[str]) -> list[Fault]:
-    fixed = {*wiring.held, *driven}
+def _coil_loop_faults(wiring: Wiring, driven: Iterable[str]) -> list[Fault]:
+    """Currents nothing would limit: inductors in a ring, or alone between nets whose voltage is fixed."""
     groups = _Groups()
-    fixed_in: dict[str, str] = {net: net for net in fixed}  # group -> a fixed net in it
+    fixed_in: dict[str, str] = {net: net for net in (*wiring.held, *driven)}  # group -> a fixed net in it
     faults = []
-    coil_touches: dict[str, int] = defaultdict(int)
     for part in wiring.parts.values():
         for one, other in _pairs(part, KINDS[part.kind].coils):
-            coil_touches[one] += 1
-            coil_touches[other] += 1
             ends = [fixed_in.get(groups.of(net)) for net in (one, other)]
             place = wiring.place("parts", part.name)
             if not groups.join(one, other):
@@ -183,9 +181,24 @@ def _coil_faults(wiring: Wiring, driven: Iterable[str]) -> list[Fault]:
                 faults.append(Fault(place, found, "a resistance between nets whose voltage is fixed"))
             if end := ends[0] or ends[1]:
                 fixed_in[groups.of(one)] = end
-    for net, count in coil_touches.items():
-        if net not in fixed and count == len(wiring.touches[net]) and count > 1:
-            name = wiring.touches[net][0][0]
-            found = f"only inductors touch net '{net}'"
-            faults.append(Fault(wiring.place("parts", name), found, "a resistor or capacitor there as well"))
     return faults
+
+
+def _coil_net_faults(wiring: Wiring, driven: Iterable[str], lonely: Sequence[str]) -> list[Fault]:
+    """Nets whose voltage nothing would decide: all that carries current there is inductors."""
+    settled = {*wiring.held, *driven, *lonely}
+    faults = []
+    for net, touches in wiring.touches.items():
+        carriers = [touch for touch in touches if not _senses(wiring, *touch)]
+        if carriers and net not in settled and all(_is_coil(wiring, *touch) for touch in carriers):
+            found = f"only inductors carry current at net '{net}'"
+            faults.append(Fault(wiring.place("parts", carriers[0][0]), found, "a resistor or capacitor there as well"))
+    return faults
+
+
+def _senses(wiring: Wiring, name: str, role: str) -> bool:
+    return name in wiring.parts and role in KINDS[wiring.parts[name].kind].senses
+
+
+def _is_coil(wiring: Wiring, name: str, role: str) -> bool:
+    return name in wiring.parts and any(role in pair for pair in KINDS[wiring.parts[name].kind].coils)

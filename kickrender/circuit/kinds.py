@@ -109,6 +109,7 @@ class Kind:
     conducts : pairs of roles between which direct current can flow.
     coils : pairs of roles joined by an inductor, a short circuit at rest.
     drives : roles whose net's voltage the part sets.
+    senses : roles that draw no current.
     ordered : pairs of roles of which the first must lie above the second, where both nets are held.
     """
 
@@ -122,6 +123,7 @@ class Kind:
     conducts: Pairs = ()
     coils: Pairs = ()
     drives: tuple[str, ...] = ()
+    senses: tuple[str, ...] = ()
     ordered: Pairs = ()
 
     @property
@@ -268,6 +270,7 @@ KINDS: Mapping[str, Kind] = MappingProxyType(
             wirings=({**_each("plus", "minus", "out"), "rails": ("rail_high", "rail_low")},),
             model=_OPAMP_MODEL,
             drives=("out",),
+            senses=("plus", "minus", "rail_high", "rail_low"),
             ordered=(("rail_high", "rail_low"),),
         ),
     }

@@ -79,9 +79,9 @@ UNITS: Mapping[str, Unit] = MappingProxyType(
     }
 )
 
-# ASCII digits only: float() and str.isdigit() also take other scripts' digits and underscores.
-_NUMBER = re.compile(r"([+-]?(?:[0-9]+\.?[0-9]*|\.[0-9]+))(?:[eE]([+-]?[0-9]{1,4}))?\s*(.*)", re.ASCII | re.DOTALL)
-_CODE = re.compile(r"([0-9]*)([^0-9\s.+-])([0-9]*)", re.ASCII)
+# [0-9] and not \d: float() and \d also take other scripts' digits, and float() takes underscores.
+_NUMBER = re.compile(r"([+-]?(?:[0-9]+\.?[0-9]*|\.[0-9]+))(?:[eE]([+-]?[0-9]{1,4}))?\s*(.*)", re.DOTALL)
+_CODE = re.compile(r"([0-9]*)([^0-9\s.+-])([0-9]*)")
 
 
 def parse_value(raw: object, unit: str, place: str = "value") -> float:

@@ -24,7 +24,8 @@ def test_row_is_whole(kind: Kind) -> None:
     roles = {role for wiring in kind.wirings for some in wiring.values() for role in some}
     for pairs in (kind.conducts, kind.coils, kind.ordered):
         assert {role for pair in pairs for role in pair} <= roles
-    assert set(kind.drives) <= roles
+    assert set(kind.drives) | set(kind.senses) <= roles
+    assert not set(kind.drives) & set(kind.senses)
     assert set(kind.coils) <= set(kind.conducts)
     assert kind.setting is None or isinstance(kind.fields[kind.setting], Quantity | Flag)
     assert not set(kind.fields) & TERMINAL_KEYS, "a field and a terminal of one name could not be told apart"

@@ -33,3 +33,9 @@ def test_every_kind_is_in_it() -> None:
     assert {f"{kind}_part" for kind in KINDS} | {f"{kind}_model" for kind in MODEL_KINDS} <= set(shapes)
     assert shapes["npn_part"]["required"] == ["kind", "model", "collector", "base", "emitter"]
     assert shapes["capacitor_part"]["properties"]["value"]["anyOf"][0] == {"type": "number", "exclusiveMinimum": 0.0}
+
+
+def test_defaults_stay_where_they_belong() -> None:
+    sine, inputs = SCHEMA["$defs"]["SineTable"], SCHEMA["$defs"]["InputTable"]
+    assert sine["properties"]["offset"]["default"] == 0.0
+    assert "default" not in inputs["properties"]["constant"]["anyOf"][0]

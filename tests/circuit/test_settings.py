@@ -126,6 +126,10 @@ def test_laws_in_the_middle() -> None:
     assert control_value(control(-1000.0, -10.0, "geometric"), 0.5) == -100.0
 
 
+def test_rounding_does_not_step_over_an_end() -> None:
+    assert control_value(control(2.978, 3.765, "geometric"), 1.0 - 2.0**-53) == 3.765
+
+
 ENDS = st.floats(1e-12, 1e12)
 
 
