@@ -9,7 +9,7 @@ from dataclasses import asdict, dataclass, field
 from functools import cached_property
 from pathlib import Path
 
-from kickrender.circuit.records import Control, Model, Part, ResolvedCircuit, Wave
+from kickrender.circuit.records import Control, Model, Part, ResolvedCircuit, ResolvedPart, Wave
 from kickrender.circuit.settings import resolve
 
 DIGEST_FORMAT = 1
@@ -60,6 +60,11 @@ class Circuit:
             Every unknown name and every value that cannot be read or is out of range, at once.
         """
         return resolve(self, settings or {}, place)
+
+    @cached_property
+    def resolved_parts(self) -> dict[tuple[str, float | None], ResolvedPart]:
+        """Parts resolved so far, by name and value set; see `settings.resolve`."""
+        return {}
 
     @cached_property
     def digest(self) -> str:

@@ -19,7 +19,7 @@ def read_circuit(name_or_path: str | Path) -> Circuit:
     InputError
         No such circuit or file, or every fault of the file at once.
     """
-    return _checked(read_source(name_or_path, "circuit", shipped_circuits()))
+    return circuit_of(read_source(name_or_path, "circuit", shipped_circuits()))
 
 
 def read_circuit_text(text: str, place: str = "circuit.toml", folder: Path | None = None) -> Circuit:
@@ -27,10 +27,11 @@ def read_circuit_text(text: str, place: str = "circuit.toml", folder: Path | Non
 
     Raises InputError, as `read_circuit`.
     """
-    return _checked(parse_source(text, place), folder)
+    return circuit_of(parse_source(text, place), folder)
 
 
-def _checked(source: Source, folder: Path | None = None) -> Circuit:
+def circuit_of(source: Source, folder: Path | None = None) -> Circuit:
+    """The circuit of a parsed file and of those it is based on; raises InputError with every fault."""
     # Imported here because pydantic is slow to load, and most of what uses this package never reads a file.
     from kickrender.circuit.assemble import assemble
 

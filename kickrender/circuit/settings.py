@@ -20,6 +20,7 @@ if TYPE_CHECKING:
 
 TEMPERATURE = "temperature"
 LEVEL = Quantity("V", "level of an input")
+_MOST_KEPT = 10_000
 _KELVIN = Quantity("K", "temperature")
 
 Target = tuple[str, str]  # ("part" | "input" | "temperature", name)
@@ -148,14 +149,27 @@ def resolve(circuit: Circuit, settings: Mapping[str, float | str | bool], place:
             for name, wave in sorted(circuit.inputs.items())
         },
         # By name, not in the file's order: two files of one digest must give the engine the same sums.
-        parts={name: _resolved(part, moved.get(("part", name))) for name, part in sorted(circuit.parts.items())},
+        parts={
+            name: _resolved(circuit, part, moved.get(("part", name))) for name, part in sorted(circuit.parts.items())
+        },
         output=circuit.output,
         full_scale_v=circuit.full_scale_v,
         settings=dict(sorted(of_controls.items())) | dict(sorted(direct.values())),
     )
 
 
-def _resolved(part: Part, value: float | None) -> ResolvedPart:
+def _resolved(circuit: Circuit, part: Part, value: float | None) -> ResolvedPart:
+    """The part at a value; the same object whenever both are the same, so that what is derived from it is shared."""
+    kept = circuit.resolved_parts
+    key = (part.name, value)
+    if key not in kept:
+        if len(kept) >= _MOST_KEPT:
+            kept.clear()
+        kept[key] = _electrical(part, value)
+    return kept[key]
+
+
+def _electrical(part: Part, value: float | None) -> ResolvedPart:
     row = KINDS[part.kind]
     if value is not None and row.setting:
         part = replace(part, values={**part.values, row.setting: value})

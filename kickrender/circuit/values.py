@@ -163,6 +163,8 @@ def shown(raw: object) -> str:
         return "a table"
     if isinstance(raw, list):
         return "a list" if raw else "an empty list"
+    if isinstance(raw, float):
+        return repr(float(raw))  # subclasses of other libraries show their own names
     text = str(raw) if isinstance(raw, datetime.date | datetime.time) else repr(raw)
     return text if len(text) <= 60 else text[:57] + "..."
 

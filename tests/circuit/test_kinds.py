@@ -5,7 +5,6 @@ import pytest
 
 from kickrender.circuit.kinds import (
     KINDS,
-    MODEL_KINDS,
     TERMINAL_KEYS,
     Choice,
     Flag,
@@ -35,10 +34,6 @@ def test_row_is_whole(kind: Kind) -> None:
         if isinstance(rule, Quantity):
             assert rule.unit in UNITS
             assert not isinstance(rule.default, str) or rule.default in kind.model
-
-
-def test_kinds_with_models_are_those_with_keys() -> None:
-    assert MODEL_KINDS == ("diode", "npn", "pnp", "opamp")
 
 
 def circuit_with(part: str) -> str:

@@ -3,6 +3,7 @@
 import copy
 import hashlib
 import os
+import pickle
 import tomllib
 from pathlib import Path
 from typing import Any
@@ -11,8 +12,10 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from kickrender.circuit import read_circuit, read_circuit_text, reader, shipped_circuits
+from kickrender.circuit import read_circuit, read_circuit_text, shipped_circuits
+from kickrender.circuit.kinds import KINDS
 from kickrender.circuit.lines import Lines
+from kickrender.circuit.reader import circuit_of
 from kickrender.circuit.records import Constant, Control, Points, Pulse, Sine
 from kickrender.circuit.source import Source
 from kickrender.errors import InputError
@@ -69,6 +72,21 @@ def test_every_kind() -> None:
     mine = circuit.models["mine"].values
     assert (mine["reverse_saturation_current"], mine["early_voltage"], mine["ideality"]) == (0.0, 80.0, 1.0)
     assert set(circuit.models) == {"silicon", "small-npn", "mine", "fet-input"}
+
+
+def test_every_row_of_the_table_of_kinds_is_read() -> None:
+    circuit = read_circuit(GOOD / "every_kind.toml")
+    assert {part.kind for part in circuit.parts.values()} == set(KINDS)
+    for part in circuit.resolve().parts.values():
+        assert set(part.values) <= set(KINDS[part.kind].units)
+        assert bool(part.values) == bool(KINDS[part.kind].units)
+
+
+def test_circuits_travel_to_other_processes() -> None:
+    circuit = read_circuit(GOOD / "every_kind.toml")
+    there = pickle.loads(pickle.dumps(circuit))
+    assert there == circuit
+    assert there.resolve({"tune": "20k"}) == circuit.resolve({"tune": "20k"})
 
 
 def test_other_ways_of_toml() -> None:
@@ -242,7 +260,7 @@ def test_any_file_reads_or_tells_its_faults(changes: list[tuple[tuple[Any, ...],
         except (TypeError, KeyError, IndexError):
             continue  # an earlier change took this place away
     try:
-        circuit = reader._checked(Source("any.toml", None, raw, Lines(EVERY_KIND)))
+        circuit = circuit_of(Source("any.toml", None, raw, Lines(EVERY_KIND)))
     except InputError as error:
         told = error.faults
     else:
