@@ -2,9 +2,10 @@
 
 Hits of one topology are solved side by side. Every quantity then has one float per lane, and a kernel reads and
 writes them as one value of type `Lanes`: `load(array, start, width)` takes `len(width)` neighbouring floats,
-`+ - * /` work lane by lane, `store` puts them back; `gather` takes floats from anywhere. `width` is a tuple whose length is the number of lanes, so
-that the compiler knows it and one source serves one lane and many. Each lane's arithmetic is plain IEEE 754
-double precision in the order written: a lane's bits never depend on its neighbours or on the width.
+`+ - * /` work lane by lane, `store` puts them back; `gather` takes floats from anywhere. `width` is a tuple whose
+length is the number of lanes, so that the compiler knows it and one source serves one lane and many. Each lane's
+arithmetic is plain IEEE 754 double precision in the order written: a lane's bits never depend on its neighbours or
+on the width.
 
 The compiler would not do this by itself: it cannot prove that the arrays do not overlap. With numba's compiler
 switched off the same functions work on numpy arrays of shape (lanes,).
@@ -25,7 +26,7 @@ FLAT = (0,) * 8  # width for passes over whole arrays, whose length is padded to
 PADDING = len(FLAT)
 
 
-class Lanes(types.Type):  # type: ignore[misc]
+class Lanes(types.Type):
     """The compiled type of `count` floats."""
 
     def __init__(self, count: int) -> None:
@@ -34,7 +35,7 @@ class Lanes(types.Type):  # type: ignore[misc]
 
 
 @register_model(Lanes)
-class _LanesModel(models.PrimitiveModel):  # type: ignore[misc]
+class _LanesModel(models.PrimitiveModel):
     def __init__(self, manager: Any, lanes: Lanes) -> None:
         super().__init__(manager, lanes, _llvm_type(lanes.count))
 

@@ -15,8 +15,8 @@ import numpy as np
 
 from kickrender.engine.compile import kernel
 from kickrender.engine.elementary import logarithm
-from kickrender.engine.lanes import FLAT, LONE, load, spread, store
 from kickrender.engine.equations import assemble, evaluate_devices, residual
+from kickrender.engine.lanes import FLAT, LONE, load, spread, store
 
 SETTLED, NOT_SETTLED = 0, 1
 

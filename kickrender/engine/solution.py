@@ -75,7 +75,7 @@ def read_pieces(piece_t, piece_h, piece_c, net, rate_hz, first, values):
         until = count
         if not last:
             # samples before the next piece's start; the guess is put right by the same product that decides theta
-            until = min(count, max(done, int((piece_t[piece + 1] * rate_hz)) - first))
+            until = min(count, max(done, int(piece_t[piece + 1] * rate_hz) - first))
             while until < count and (first + until) * period < piece_t[piece + 1]:
                 until += 1
             while until > done and (first + until - 1) * period >= piece_t[piece + 1]:

@@ -47,7 +47,7 @@ def own_row(net: str) -> str:
 
 
 class Stamps:
-    """Collects the stamps of all parts of one circuit, in their order.
+    """Collects the stamps of one part.
 
     places and numbers of the three kinds of linear entry run in parallel: (row, column) and its coefficient in G
     or C. `typical` values say what size such an entry usually has, whatever this circuit's own value.
@@ -55,7 +55,7 @@ class Stamps:
 
     def __init__(self, temperature_k: float) -> None:
         self.temperature_k = temperature_k
-        self.inner_names: list[str] = []
+        self.structure = -1  # number of its shape, the same for every part of that shape
         self.own_equations: list[str] = []
         self.g_places: list[tuple[str, str]] = []
         self.g_numbers: list[float] = []
@@ -64,15 +64,13 @@ class Stamps:
         self.c_numbers: list[float] = []
         self.c_typical: list[float] = []
         self.devices: list[Device] = []
-        self.exponential_numbers: list[tuple[str, Sequence[float]]] = []
-        self.tanh_numbers: list[tuple[str, Sequence[float]]] = []
-        self.parameter_numbers: list[tuple[str, Sequence[float]]] = []
+        self.exponential_numbers: list[Sequence[float]] = []
+        self.tanh_numbers: list[Sequence[float]] = []
+        self.parameter_numbers: list[Sequence[float]] = []
 
     def inner(self, part: ResolvedPart, role: str) -> str:
         """A further unknown of the part's own: an inner net or a current."""
-        name = f"{part.name}.{role}"
-        self.inner_names.append(name)
-        return name
+        return f"{part.name}.{role}"
 
     def own_equation(self, net: str) -> str:
         """Replace the net's current law by the part's equation; returns the name of that row."""
@@ -109,8 +107,12 @@ class Stamps:
         tanhs: Sequence[float] = (),
         parameters: Sequence[float] = (),
     ) -> None:
-        """A nonlinear part: its structure, then (inverse_scale, offset) per exponential, (a, b) per tanh, parameters."""
+        """A nonlinear part: its structure, (inverse_scale, offset) per exponential, (a, b) per tanh, parameters."""
         self.devices.append(device)
-        self.exponential_numbers.append((device.law, exponentials))
-        self.tanh_numbers.append((device.law, tanhs))
-        self.parameter_numbers.append((device.law, parameters))
+        self.exponential_numbers.append(exponentials)
+        self.tanh_numbers.append(tanhs)
+        self.parameter_numbers.append(parameters)
+
+    def shape(self) -> tuple[object, ...]:
+        """Everything but the numbers."""
+        return tuple(self.g_places), tuple(self.c_places), tuple(self.devices), tuple(self.own_equations)

@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from kickrender.circuit.records import GROUND, ResolvedCircuit, Sine
+from kickrender.circuit.records import GROUND, ResolvedCircuit, ResolvedPart, Sine
 from kickrender.engine.laws import LAWS, STAMPS
 from kickrender.engine.stamps import Device, Stamps, own_row
 
@@ -47,55 +47,62 @@ class Topology:
         return len(self.unknowns)
 
 
-def stamp_all(circuit: ResolvedCircuit) -> Stamps:
-    """Every part's stamps, in the order of the parts."""
-    stamps = Stamps(circuit.temperature_k)
-    for part in circuit.parts.values():
+def stamp_all(circuit: ResolvedCircuit) -> list[Stamps]:
+    """Every part's stamps, in the order of the parts; those of a part met before are not made again."""
+    return [_stamp(part, circuit.temperature_k) for part in circuit.parts.values()]
+
+
+# A pack's hits share most of their parts as objects. The part is kept too, so that its id stays its own.
+_stamped: dict[tuple[int, float], tuple[ResolvedPart, Stamps]] = {}
+_MOST_STAMPED = 20_000
+_structures: dict[object, int] = {}
+_topologies: dict[tuple[object, ...], Topology] = {}
+
+
+def _stamp(part: ResolvedPart, temperature_k: float) -> Stamps:
+    key = (id(part), temperature_k)
+    if key not in _stamped:
+        if len(_stamped) >= _MOST_STAMPED:
+            _stamped.clear()
+        stamps = Stamps(temperature_k)
         STAMPS[part.kind](part, stamps)
-    return stamps
+        stamps.structure = _structures.setdefault(stamps.shape(), len(_structures))
+        _stamped[key] = part, stamps
+    return _stamped[key][1]
 
 
-_known_topologies: dict[tuple[object, ...], Topology] = {}
-
-
-def topology_of(circuit: ResolvedCircuit, stamps: Stamps) -> Topology:
+def topology_of(circuit: ResolvedCircuit, stamps: Sequence[Stamps]) -> Topology:
     """The circuit's structure; the same object for every circuit of that structure."""
     inputs = tuple(circuit.inputs)
     is_sine = tuple(isinstance(wave, Sine) for wave in circuit.inputs.values())
     held = (*circuit.nets, GROUND)
-    key = (
-        inputs,
-        is_sine,
-        held,
-        circuit.output,
-        tuple(stamps.g_places),
-        tuple(stamps.c_places),
-        tuple(stamps.devices),
-    )
-    if key not in _known_topologies:
-        _known_topologies[key] = _build(inputs, is_sine, held, circuit.output, stamps)
-    return _known_topologies[key]
+    key = (inputs, is_sine, held, circuit.output, tuple(part.structure for part in stamps))
+    if key not in _topologies:
+        _topologies[key] = _build(inputs, is_sine, held, circuit.output, stamps)
+    return _topologies[key]
 
 
 def _build(
-    inputs: tuple[str, ...], is_sine: tuple[bool, ...], held: tuple[str, ...], output: str, stamps: Stamps
+    inputs: tuple[str, ...], is_sine: tuple[bool, ...], held: tuple[str, ...], output: str, stamps: Sequence[Stamps]
 ) -> Topology:
-    own = {own_row(net) for net in stamps.own_equations}
-    names: list[str] = []
-    for row, column in (*stamps.g_places, *stamps.c_places):
-        names += [row, column]
-    for device in stamps.devices:
+    own_equations = [net for part in stamps for net in part.own_equations]
+    own = {own_row(net) for net in own_equations}
+    g_places = [place for part in stamps for place in part.g_places]
+    c_places = [place for part in stamps for place in part.c_places]
+    devices = [device for part in stamps for device in part.devices]
+    names = [name for place in (*g_places, *c_places) for name in place]
+    for device in devices:
         names += [net for pair in device.exponentials for net in pair]
         names += [net for triple in device.tanhs for net in triple]
     names.append(output)
     unknowns = tuple(dict.fromkeys(name for name in names if name not in {*inputs, *held, *own}))
     columns = {name: index for index, name in enumerate((*unknowns, *inputs, *held))}
     rows = {name: index for index, name in enumerate(unknowns)}
-    for net in stamps.own_equations:
+    for net in own_equations:
         rows[own_row(net)] = rows.pop(net)
-    entries_g, sum_g = _entries(stamps.g_places, rows, columns)
-    entries_c, sum_c = _entries(stamps.c_places, rows, columns)
-    order = sorted(range(len(stamps.devices)), key=lambda index: LAWS.index(stamps.devices[index].law))
+    entries_g, sum_g = _entries(g_places, rows, columns)
+    entries_c, sum_c = _entries(c_places, rows, columns)
+    order = sorted(range(len(devices)), key=lambda index: LAWS.index(devices[index].law))
     return Topology(
         unknowns,
         inputs,
@@ -105,9 +112,9 @@ def _build(
         entries_c,
         sum_g,
         sum_c,
-        _summed(sum_g, _spread(stamps.g_typical), len(entries_g)),
-        _summed(sum_c, _spread(stamps.c_typical), len(entries_c)),
-        tuple(stamps.devices[index] for index in order),
+        _summed(sum_g, _spread([value for part in stamps for value in part.g_typical]), len(entries_g)),
+        _summed(sum_c, _spread([value for part in stamps for value in part.c_typical]), len(entries_c)),
+        tuple(devices[index] for index in order),
         tuple(order),
         rows,
         columns,
@@ -136,14 +143,14 @@ class Numbers:
     held_v: NDArray[np.float64]
 
 
-def numbers_of(circuit: ResolvedCircuit, topology: Topology, stamps: Stamps) -> Numbers:
+def numbers_of(circuit: ResolvedCircuit, topology: Topology, stamps: Sequence[Stamps]) -> Numbers:
     """Sum the circuit's stamps into its topology's entries."""
     return Numbers(
-        _summed(topology.sum_g, stamps.g_numbers, len(topology.entries_g)),
-        _summed(topology.sum_c, stamps.c_numbers, len(topology.entries_c)),
-        _sorted(stamps.exponential_numbers, topology).reshape(-1, 2),
-        _sorted(stamps.tanh_numbers, topology).reshape(-1, 2),
-        _sorted(stamps.parameter_numbers, topology),
+        _summed(topology.sum_g, [value for part in stamps for value in part.g_numbers], len(topology.entries_g)),
+        _summed(topology.sum_c, [value for part in stamps for value in part.c_numbers], len(topology.entries_c)),
+        _sorted([values for part in stamps for values in part.exponential_numbers], topology).reshape(-1, 2),
+        _sorted([values for part in stamps for values in part.tanh_numbers], topology).reshape(-1, 2),
+        _sorted([values for part in stamps for values in part.parameter_numbers], topology),
         np.array([*circuit.nets.values(), 0.0]),
     )
 
@@ -163,5 +170,5 @@ def _spread(typical: Sequence[float]) -> list[float]:
     ]
 
 
-def _sorted(per_device: Sequence[tuple[str, Sequence[float]]], topology: Topology) -> NDArray[np.float64]:
-    return np.array([number for index in topology.device_order for number in per_device[index][1]], dtype=np.float64)
+def _sorted(per_device: Sequence[Sequence[float]], topology: Topology) -> NDArray[np.float64]:
+    return np.array([number for index in topology.device_order for number in per_device[index]], dtype=np.float64)
