@@ -77,7 +77,7 @@ def wiring_faults(wiring: Wiring) -> list[Fault]:
     faults += [_lonely_fault(wiring, net) for net in lonely]
     faults += _ground_faults(wiring, driven, lonely)
     faults += _coil_loop_faults(wiring, driven)
-    return faults + _coil_net_faults(wiring, driven, lonely)
+    return faults + _coil_net_faults(wiring, lonely)
 
 
 def _pairs(part: Part, pairs: Pairs) -> Iterable[tuple[str, str]]:
@@ -184,9 +184,9 @@ def _coil_loop_faults(wiring: Wiring, driven: Iterable[str]) -> list[Fault]:
     return faults
 
 
-def _coil_net_faults(wiring: Wiring, driven: Iterable[str], lonely: Sequence[str]) -> list[Fault]:
+def _coil_net_faults(wiring: Wiring, lonely: Sequence[str]) -> list[Fault]:
     """Nets whose voltage nothing would decide: all that carries current there is inductors."""
-    settled = {*wiring.held, *driven, *lonely}
+    settled = {*wiring.held, *lonely}
     faults = []
     for net, touches in wiring.touches.items():
         carriers = [touch for touch in touches if not _senses(wiring, *touch)]
