@@ -43,19 +43,25 @@ def render(
       kickrender render bridged-t --set decay=0.8 --set accent=5V --level "-16 LUFS" --out long.wav
       kickrender render my-circuit.toml --raw --length 0.5 --format float32 --probe core --out nets.wav
     """
-    from kickrender.sound.loaded import load
+    from kickrender.circuit import read_circuit
+    from kickrender.sound.level import read_level_text
     from kickrender.sound.options import read_options
     from kickrender.sound.wav import check_wav_name
 
+    check_wav_name(out)
+    turned = read_settings(settings)
     options = read_options(
         {"rate": rate, "format": sample_format, "length": length, "oversample": oversample, "raw": raw or None},
         place=lambda name: f"--{name}",
     )
-    loaded = load(circuit)
-    loaded.check(read_settings(settings), probes=probes, level=level)
-    check_wav_name(out)
+    wanted = None if level is None else read_level_text(level, "--level")
+    struck = read_circuit(circuit)
+    resolved = struck.resolve(turned, "--set")
     ready_solver()
-    sound = loaded.render(read_settings(settings), options=options, level=level, probes=probes)
+    from kickrender.sound.loaded import LoadedCircuit, check_probes
+
+    check_probes(resolved, probes, "--probe")
+    sound = LoadedCircuit(struck).render(turned, options=options, level=wanted, probes=probes)
     sound.write(out)
     for text in sound.facts["notes"]:
         note(f"note: {text}")

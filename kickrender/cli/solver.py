@@ -11,4 +11,6 @@ def ready_solver() -> None:
 
     if not engine.is_compiled():
         note("compiling the solver for this machine (the first run only, up to a minute) ...")
-    engine.warm_up()
+        from kickrender.sound.warm_up import warm_up
+
+        warm_up()

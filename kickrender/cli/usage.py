@@ -30,9 +30,9 @@ def fault_of(error: click.UsageError) -> Fault:
         return Fault(
             place, f"unknown option '{error.option_name}'", ", ".join(options), nearest_name(error.option_name, options)
         )
-    if isinstance(error, click.MissingParameter) and error.param is not None:
-        name = error.param.opts[0] if isinstance(error.param, click.Option) else error.param.make_metavar(context)
-        return Fault(place, f"{name} is missing", context.get_usage().removeprefix("Usage: ") if context else "")
+    if isinstance(error, click.MissingParameter) and error.param is not None and context is not None:
+        name = error.param.opts[0] if isinstance(error.param, click.Option) else error.param.human_readable_name.upper()
+        return Fault(place, f"{name} is missing", context.get_usage().removeprefix("Usage: "))
     if isinstance(error, click.BadParameter) and error.param is not None:
         return Fault(f"{place}, {error.param.opts[0]}", error.message.rstrip(".").strip())
     return Fault(place, error.format_message().rstrip("."))

@@ -13,7 +13,7 @@ from pathlib import Path
 
 from kickrender.circuit import Circuit
 from kickrender.pack.records import Hit, Plan
-from kickrender.sound.level import Level
+from kickrender.sound.level import Gain, Level
 from kickrender.sound.options import SoundOptions
 
 MOST_HITS = 32  # solved side by side; more gains little, and their samples must fit a worker's memory
@@ -24,7 +24,7 @@ FEWEST_HITS = 8
 class Batch:
     """What a worker needs to render some hits, and nothing of the rest of the pack.
 
-    gains_db : group -> its gain, for groups that were measured before. [dB]
+    gains : group -> its gain, for groups that were measured before.
     """
 
     title: str
@@ -34,7 +34,7 @@ class Batch:
     together: tuple[str, ...]
     folder: Path
     hits: tuple[Hit, ...]
-    gains_db: Mapping[int, float] = field(default_factory=dict)
+    gains: Mapping[int, Gain] = field(default_factory=dict)
 
 
 def groups_of(hits: Iterable[Hit]) -> list[tuple[Hit, ...]]:
@@ -46,7 +46,7 @@ def groups_of(hits: Iterable[Hit]) -> list[tuple[Hit, ...]]:
 
 
 def batches_of(
-    plan: Plan, folder: Path, groups: Sequence[tuple[Hit, ...]], jobs: int, gains_db: Mapping[int, float]
+    plan: Plan, folder: Path, groups: Sequence[tuple[Hit, ...]], jobs: int, gains: Mapping[int, Gain]
 ) -> Iterator[Batch]:
     """Batches of whole groups; a group whose gain is known may be cut.
 
@@ -59,7 +59,7 @@ def batches_of(
     size = min(MOST_HITS, max(FEWEST_HITS, -(-total // jobs)))
     pieces: list[tuple[Hit, ...]] = []
     for group in groups:
-        if group[0].group in gains_db:
+        if group[0].group in gains:
             pieces.extend((hit,) for hit in group)
         else:
             pieces.append(group)
@@ -68,14 +68,14 @@ def batches_of(
     taken: list[Hit] = []
     for piece in pieces:
         if taken and (len(taken) + len(piece) > size or piece[0].circuit != taken[0].circuit):
-            yield _batch(plan, folder, taken, gains_db)
+            yield _batch(plan, folder, taken, gains)
             taken = []
         taken.extend(piece)
     if taken:
-        yield _batch(plan, folder, taken, gains_db)
+        yield _batch(plan, folder, taken, gains)
 
 
-def _batch(plan: Plan, folder: Path, hits: Sequence[Hit], gains_db: Mapping[int, float]) -> Batch:
+def _batch(plan: Plan, folder: Path, hits: Sequence[Hit], gains: Mapping[int, Gain]) -> Batch:
     circuits = {name: plan.circuits[name] for name in dict.fromkeys(hit.circuit for hit in hits)}
-    gains = {hit.group: gains_db[hit.group] for hit in hits if hit.group in gains_db}
+    gains = {hit.group: gains[hit.group] for hit in hits if hit.group in gains}
     return Batch(plan.title, circuits, plan.options, plan.level, plan.together, folder, tuple(hits), gains)

@@ -76,7 +76,7 @@ def _checked_steps(block: Block, circuit: Circuit, faults: list[Fault]) -> dict[
     """
     before = len(faults)
     for name, raw in block.fixed.items():
-        _value(circuit, name, raw, f"{block.place}fixed.{name}", faults)
+        _value(circuit, name, raw, block.fixed_places[name], faults)
     steps = {axis.name: _steps(circuit, axis, faults) for axis in block.axes}
     return steps if len(faults) == before else None
 

@@ -55,6 +55,7 @@ class _Reader:
         self.source, self.raw, self.at = source, source.raw, source.at
         self.folder = folder or (source.path.parent if source.path else Path())
         self.faults: list[Fault] = []
+        self.walked: dict[str, None] = {CIRCUIT_AXIS: None}  # names of axes, in the file's order
         self.known_circuits: dict[str, Circuit | None] = {}
 
     def pack(self) -> Pack:
@@ -65,10 +66,10 @@ class _Reader:
         level, together = self.level()
         template = self.template()
         blocks = self.blocks()
-        walked = [CIRCUIT_AXIS, *dict.fromkeys(axis.name for block in blocks for axis in block.axes)]
         for name in together:
-            if name not in walked:
-                self.fault(("level", "together"), f"no axis '{name}'", ", ".join(walked), nearest_name(name, walked))
+            if name not in self.walked:
+                allowed, nearest = ", ".join(self.walked), nearest_name(name, self.walked)
+                self.fault(("level", "together"), f"no axis '{name}'", allowed, nearest)
         if self.faults:
             raise InputError(self.faults)
         return Pack(
@@ -125,20 +126,21 @@ class _Reader:
         circuits = self.circuits(entry.get("circuit", self.raw.get("circuit")), (*own, "circuit"))
         axes: dict[str, Axis] = {}
         fixed: dict[str, Setting] = {}
-        for raw, place in ((self.raw, ()), (entry, where)) if where else ((self.raw, ()),):
-            for name, value in self.inner(raw, place, "fixed").items():
+        places: dict[str, str] = {}
+        layers: list[tuple[Mapping[str, Any], tuple[object, ...]]] = [(self.raw, ())]
+        for raw, keys in [*layers, (entry, where)] if where else layers:
+            for name, value in self.inner(raw, keys, "fixed").items():
                 axes.pop(name, None)
-                fixed[name] = self.setting(value, (*place, "fixed", name))
-            here = self.inner(raw, place, "axes")
-            for name, value in here.items():
-                if name in self.inner(raw, place, "fixed"):
-                    self.fault((*place, "axes", name), f"'{name}' is both an axis and fixed", "one of the two")
+                fixed[name] = self.setting(value, (*keys, "fixed", name))
+                places[name] = self.at(*keys, "fixed", name)
+            for name, value in self.inner(raw, keys, "axes").items():
+                if name in self.inner(raw, keys, "fixed"):
+                    self.fault((*keys, "axes", name), f"'{name}' is both an axis and fixed", "one of the two")
+                self.walked[name] = None
                 fixed.pop(name, None)
-                axis = self.axis(name, value, (*place, "axes", name))
-                if axis:
+                if axis := self.axis(name, value, (*keys, "axes", name)):
                     axes[name] = axis
-        place = f"{self.at(*where)}, " if where else f"{self.at()}, "
-        return Block(circuits, tuple(axes.values()), fixed, place) if len(self.faults) == before else None
+        return Block(circuits, tuple(axes.values()), fixed, places) if len(self.faults) == before else None
 
     def circuits(self, given: Any, where: tuple[object, ...]) -> dict[str, Circuit]:
         names = given if isinstance(given, list) else [given]
@@ -171,7 +173,8 @@ class _Reader:
             return Axis(name, values, None, place)
         if isinstance(value, dict):
             return self.span(name, value, where)
-        self.fault(where, shown(value), "a list of values, or { from, to, steps, law }")
+        found = "an empty list" if value == [] else shown(value)
+        self.fault(where, found, "a list of values, or { from, to, steps, law }")
         return None
 
     def span(self, name: str, value: dict[str, Any], where: tuple[object, ...]) -> Axis | None:

@@ -35,13 +35,13 @@ class Block:
     """One grid: every circuit with every combination of axis values.
 
     circuits : name as written -> circuit, in the order of the file.
-    fixed : settings that every hit of the block has.
+    fixed : settings that every hit of the block has; `fixed_places` is where each stands, for faults.
     """
 
     circuits: Mapping[str, Circuit]
     axes: tuple[Axis, ...]
     fixed: Mapping[str, Setting]
-    place: str
+    fixed_places: Mapping[str, str]
 
 
 @dataclass(frozen=True)
@@ -49,13 +49,14 @@ class Pack:
     """A pack file as its author wrote it, every key known and every circuit read.
 
     template : the file names' template; `template_place` is where it stands.
+    path : None for a text that is no file.
     level : None when none is asked for.
     together : axes along which hits share one gain.
     """
 
     title: str
     about: str
-    path: Path
+    path: Path | None
     blocks: tuple[Block, ...]
     options: SoundOptions
     level: Level | None

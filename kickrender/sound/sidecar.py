@@ -14,7 +14,9 @@ from typing import Any
 from kickrender.circuit import Circuit, Model, Part, ResolvedCircuit, ResolvedPart, Wave
 from kickrender.circuit.kinds import KINDS
 from kickrender.circuit.settings import unit_of
+from kickrender.engine import ENGINE_VERSION, Solution
 from kickrender.errors import WriteError
+from kickrender.sound.options import SoundOptions
 
 SCHEMA = "kickrender sidecar"
 SCHEMA_VERSION = 1
@@ -36,7 +38,18 @@ def circuit_facts(circuit: Circuit, resolved: ResolvedCircuit) -> dict[str, Any]
     }
 
 
-def _value(value: float | bool, unit: str) -> dict[str, Any]:
+def sound_facts(circuit: Circuit, solution: Solution, options: SoundOptions) -> dict[str, Any]:
+    """How a sidecar begins: the circuit, how it was solved and how it was asked to sound."""
+    return {
+        "schema": SCHEMA,
+        "schema_version": SCHEMA_VERSION,
+        **circuit_facts(circuit, solution.circuit),
+        "engine": {"version": ENGINE_VERSION, "counters": dict(solution.counters)},
+        "sound": asdict(options),
+    }
+
+
+def _value(value: float | bool | list[float], unit: str) -> dict[str, Any]:
     return {"value": value, "unit": unit}
 
 

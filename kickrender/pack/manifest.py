@@ -1,0 +1,92 @@
+"""The manifest over a finished pack: pack.json for programs, pack.csv for tables, from the hits' own sidecars."""
+
+from __future__ import annotations
+
+import csv
+import io
+from collections.abc import Mapping
+from dataclasses import asdict
+from pathlib import Path
+from typing import Any
+
+from kickrender.errors import WriteError
+from kickrender.pack.records import Plan
+from kickrender.pack.sidecar import json_path, wav_path
+from kickrender.sound.files import write_whole
+from kickrender.sound.sidecar import check_ours, json_bytes, read_sidecar
+
+SCHEMA = "kickrender pack"
+SCHEMA_VERSION = 1
+JSON_NAME, CSV_NAME = "pack.json", "pack.csv"
+
+
+def write_manifest(plan: Plan, folder: Path, failed: Mapping[str, str]) -> None:
+    """Write pack.json and pack.csv; hits without a file stand in pack.json with the reason.
+
+    Raises
+    ------
+    WriteError
+        If a file cannot be written, or a sidecar has gone meanwhile.
+    """
+    check_ours(folder / JSON_NAME)
+    hits = [_entry(folder, hit.name) for hit in plan.hits if hit.name not in failed]
+    manifest = {
+        "schema": SCHEMA,
+        "schema_version": SCHEMA_VERSION,
+        "title": plan.title,
+        "about": plan.about,
+        "circuits": {circuit.name: circuit.digest for circuit in plan.circuits.values()},
+        "sound": asdict(plan.options),
+        "level": None if plan.level is None else asdict(plan.level),
+        "shares_gain_along": list(plan.together),
+        "hits": hits,
+        "failed": [{"name": name, "reason": reason} for name, reason in failed.items()],
+    }
+    write_whole(folder / CSV_NAME, _csv(hits))
+    write_whole(folder / JSON_NAME, json_bytes(manifest))
+
+
+def remove_manifest(folder: Path) -> None:
+    """Take away the manifest of an earlier run."""
+    check_ours(folder / JSON_NAME)
+    for name in (JSON_NAME, CSV_NAME):
+        try:
+            (folder / name).unlink(missing_ok=True)
+        except OSError as error:
+            raise WriteError(f"{folder / name}: cannot be replaced: {error.strerror}") from None
+
+
+def stale_names(plan: Plan, folder: Path) -> tuple[str, ...]:
+    """Hits on disk, by name, that this pack does not hold (any more)."""
+    planned = {hit.name for hit in plan.hits}
+    found = (path.relative_to(folder).with_suffix("").as_posix() for path in folder.rglob("*.json"))
+    return tuple(sorted(n for n in found if n not in planned and read_sidecar(json_path(folder, n)) is not None))
+
+
+def _entry(folder: Path, name: str) -> dict[str, Any]:
+    facts = read_sidecar(json_path(folder, name))
+    if facts is None:
+        raise WriteError(f"{json_path(folder, name)}: has gone or was changed while the pack was rendered; run again")
+    return {
+        "name": name,
+        "file": wav_path(Path(), name).as_posix(),
+        "sidecar": json_path(Path(), name).as_posix(),
+        "axes": facts["pack"]["axes"],
+        "recipe_digest": facts["recipe_digest"],
+        "pcm_sha256": facts["pcm"]["sha256"],
+        "gain_db": facts["gain_db"],
+        "measurements": facts["measurements"],
+    }
+
+
+def _csv(hits: list[dict[str, Any]]) -> bytes:
+    """One row a hit: file, axes, measurements, gain, digest; a hit without an axis leaves its cell empty."""
+    axes = list(dict.fromkeys(name for hit in hits for name in hit["axes"]))
+    measures = list(dict.fromkeys(name for hit in hits for name in hit["measurements"]))
+    text = io.StringIO()
+    table = csv.writer(text, lineterminator="\n")
+    table.writerow(["file", *axes, *measures, "gain_db", "pcm_sha256"])
+    for hit in hits:
+        row = [hit["axes"].get(name, "") for name in axes] + [hit["measurements"].get(name) for name in measures]
+        table.writerow([hit["file"], *row, hit["gain_db"], hit["pcm_sha256"]])
+    return text.getvalue().encode()

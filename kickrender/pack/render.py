@@ -1,0 +1,92 @@
+"""One batch of hits: solved side by side, heard, levelled group by group, written."""
+
+from __future__ import annotations
+
+import itertools
+from collections.abc import Callable, Iterator
+from dataclasses import dataclass
+
+from kickrender.errors import KickrenderError, WriteError
+from kickrender.pack.batches import Batch, groups_of
+from kickrender.pack.records import Hit
+from kickrender.pack.sidecar import write_hit
+from kickrender.sound.level import Gain, Level, level_gain
+from kickrender.sound.measure import Measurements
+from kickrender.sound.render import Take, finish, hear_each
+
+
+@dataclass(frozen=True)
+class Outcome:
+    """What became of one hit.
+
+    failure : why there is no file, in words; empty when there is one.
+    fatal : whether no other hit can be written either (the folder is full or closed).
+    measurements : before level, when that was all that was wanted.
+    """
+
+    name: str
+    failure: str = ""
+    fatal: bool = False
+    measurements: Measurements | None = None
+
+
+Stop = Callable[[], bool]
+
+
+def render_batch(batch: Batch, stop: Stop) -> Iterator[Outcome]:
+    """Render and write every hit of a batch, one outcome each; ends early, between two files, when `stop()` is true."""
+    takes = _heard(batch)
+    for group in groups_of(batch.hits):
+        heard: list[tuple[Hit, Take]] = []
+        for hit, take in itertools.islice(takes, len(group)):
+            if stop():
+                return
+            if isinstance(take, Take):
+                heard.append((hit, take))
+            else:
+                yield Outcome(hit.name, str(take))
+        if not heard:
+            continue
+        try:
+            gain = batch.gains.get(group[0].group) or gain_of([take.measurements for _, take in heard], batch.level)
+        except KickrenderError as error:
+            yield from (Outcome(hit.name, str(error)) for hit, _ in heard)
+            continue
+        for hit, take in heard:
+            if stop():
+                return
+            yield _written(batch, hit, take, gain)
+
+
+def measure_batch(batch: Batch, stop: Stop) -> Iterator[Outcome]:
+    """Solve and measure every hit of a batch, writing nothing."""
+    for hit, take in _heard(batch):
+        if stop():
+            return
+        if isinstance(take, Take):
+            yield Outcome(hit.name, measurements=take.measurements)
+        else:
+            yield Outcome(hit.name, str(take))
+
+
+def gain_of(measurements: list[Measurements], level: Level | None) -> Gain:
+    """The one gain of hits that share it; none when no level is asked for."""
+    return Gain(0.0) if level is None else level_gain(measurements, level)
+
+
+def _heard(batch: Batch) -> Iterator[tuple[Hit, Take | KickrenderError]]:
+    """Every hit's take or the reason there is none, in the order of its groups."""
+    hits = [hit for group in groups_of(batch.hits) for hit in group]
+    settings = [(batch.circuits[hit.circuit], hit.settings) for hit in hits]
+    yield from zip(hits, hear_each(settings, batch.options), strict=True)
+
+
+def _written(batch: Batch, hit: Hit, take: Take, gain: Gain) -> Outcome:
+    try:
+        sound = finish(take, gain, batch.level, hit.seed)
+        write_hit(batch, hit, sound)
+    except WriteError as error:
+        return Outcome(hit.name, str(error), fatal=True)
+    except KickrenderError as error:
+        return Outcome(hit.name, str(error))
+    return Outcome(hit.name)

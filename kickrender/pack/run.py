@@ -1,0 +1,118 @@
+"""A whole pack: what is missing is rendered, what is there is kept, and the manifest is written last."""
+
+from __future__ import annotations
+
+import contextlib
+import tempfile
+from collections.abc import Iterator, Sequence
+from dataclasses import dataclass, field
+from pathlib import Path
+
+from kickrender.errors import MeasurementError, WriteError
+from kickrender.pack.batches import MOST_HITS, batches_of, groups_of
+from kickrender.pack.manifest import remove_manifest, stale_names, write_manifest
+from kickrender.pack.records import Hit, Plan
+from kickrender.pack.render import Outcome, gain_of, measure_batch, render_batch
+from kickrender.pack.sidecar import is_done
+from kickrender.pack.workers import Progress, run_batches
+from kickrender.sound.files import sweep_unfinished
+from kickrender.sound.level import Gain
+
+FEWEST_PER_WORKER = 8  # starting a worker costs about as much as rendering this many hits
+
+
+@dataclass(frozen=True)
+class Result:
+    """What a run did.
+
+    rendered, kept : names of hits made now, and found whole from an earlier run.
+    failed : name -> why, for hits that have no file.
+    stale : WAVs of an earlier run of this pack that belong to no hit any more.
+    """
+
+    rendered: tuple[str, ...]
+    kept: tuple[str, ...]
+    failed: dict[str, str] = field(default_factory=dict)
+    stale: tuple[str, ...] = ()
+
+
+def missing_hits(plan: Plan, folder: Path) -> list[Hit]:
+    """Hits to render: those without whole files of their recipe, and whoever shares a gain with them."""
+    done = {hit.name for hit in plan.hits if is_done(plan, folder, hit)}
+    return [hit for group in groups_of(plan.hits) if any(h.name not in done for h in group) for hit in group]
+
+
+def render_plan(plan: Plan, folder: Path, jobs: int = 1, progress: Progress = lambda hits: None) -> Result:
+    """Fill `folder` with the pack: a WAV and a sidecar for each hit, then pack.json and pack.csv over all.
+
+    Parameters
+    ----------
+    folder : Path
+        Made when missing. Whole files of an earlier run are kept.
+    jobs : int
+        Worker processes. No byte depends on it.
+    progress : function (hits) -> None
+        Told how many more hits are done; kept ones count at once.
+
+    Returns
+    -------
+    Result; hits that failed are named there and stop no other.
+
+    Raises
+    ------
+    WriteError
+        If the folder cannot be written; what was written is whole.
+    WorkerError
+        If a worker process died.
+    """
+    _open_folder(folder)
+    missing = missing_hits(plan, folder)
+    kept = {hit.name for hit in plan.hits} - {hit.name for hit in missing}
+    stale = stale_names(plan, folder)
+    progress(len(kept))
+    failed: dict[str, str] = {}
+    if missing:
+        remove_manifest(folder)  # a manifest stands for a finished pack
+        for outcome in _render(plan, folder, missing, jobs, progress):
+            if outcome.fatal:
+                raise WriteError(outcome.failure)
+            if outcome.failure:
+                failed[outcome.name] = outcome.failure
+    write_manifest(plan, folder, failed)
+    rendered = tuple(hit.name for hit in missing if hit.name not in failed)
+    in_order = {hit.name: failed[hit.name] for hit in plan.hits if hit.name in failed}
+    return Result(rendered, tuple(hit.name for hit in plan.hits if hit.name in kept), in_order, stale)
+
+
+def _render(plan: Plan, folder: Path, missing: Sequence[Hit], jobs: int, progress: Progress) -> Iterator[Outcome]:
+    jobs = max(1, min(jobs, len(missing) // FEWEST_PER_WORKER))
+    groups = groups_of(missing)
+    large = [group for group in groups if len(group) > MOST_HITS]
+    gains = _measured_gains(plan, folder, large, jobs) if plan.together else {}
+    yield from run_batches(batches_of(plan, folder, groups, jobs, gains), render_batch, jobs, progress)
+
+
+def _measured_gains(plan: Plan, folder: Path, groups: Sequence[Sequence[Hit]], jobs: int) -> dict[int, Gain]:
+    """The gain of each group that is too large to be held at once, from a run that only measures.
+
+    A group that cannot be measured has none here; its hits fail, with the reason, when they are rendered.
+    """
+    alone = [(hit,) for group in groups for hit in group]
+    outcomes = run_batches(batches_of(plan, folder, alone, jobs, {}), measure_batch, jobs, lambda hits: None)
+    measured = {outcome.name: outcome.measurements for outcome in outcomes if outcome.measurements is not None}
+    gains: dict[int, Gain] = {}
+    for group in groups:
+        with contextlib.suppress(MeasurementError):
+            gains[group[0].group] = gain_of([measured[h.name] for h in group if h.name in measured], plan.level)
+    return gains
+
+
+def _open_folder(folder: Path) -> None:
+    """Make the folder, try to write there, and clear what a killed run left unfinished."""
+    try:
+        folder.mkdir(parents=True, exist_ok=True)
+        with tempfile.TemporaryFile(dir=folder) as file:
+            file.write(b"kickrender")
+    except OSError as error:
+        raise WriteError(f"{folder}: cannot be written: {error.strerror}") from None
+    sweep_unfinished(folder)

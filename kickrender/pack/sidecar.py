@@ -1,0 +1,67 @@
+"""The files of one hit: its WAV, and a sidecar that adds the hit's place in the pack to what the sound says."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import Any
+
+from kickrender.errors import WriteError
+from kickrender.pack.batches import Batch
+from kickrender.pack.records import Hit, Plan
+from kickrender.sound.files import write_whole
+from kickrender.sound.render import Sound
+from kickrender.sound.sidecar import check_ours, json_bytes, read_sidecar
+from kickrender.sound.wav import pcm_digest_of_file, write_wav
+
+
+def wav_path(folder: Path, name: str) -> Path:
+    """The WAV of the hit called `name`."""
+    return folder / f"{name}.wav"
+
+
+def json_path(folder: Path, name: str) -> Path:
+    """The sidecar of the hit called `name`."""
+    return folder / f"{name}.json"
+
+
+def write_hit(batch: Batch, hit: Hit, sound: Sound) -> None:
+    """Write a hit's WAV and then its sidecar, making their folder when it is missing.
+
+    Raises
+    ------
+    WriteError
+        If the folder cannot be written to or is full, or somebody else's .json is in the way.
+    """
+    wav, sidecar = wav_path(batch.folder, hit.name), json_path(batch.folder, hit.name)
+    try:
+        wav.parent.mkdir(parents=True, exist_ok=True)
+    except OSError as error:
+        raise WriteError(f"{wav.parent}: cannot be made: {error.strerror}") from None
+    check_ours(sidecar)
+    write_wav(wav, sound.pcm, sound.rate, batch.options.format)
+    write_whole(sidecar, json_bytes(sidecar_of(batch, hit, sound)))
+
+
+def sidecar_of(batch: Batch, hit: Hit, sound: Sound) -> dict[str, Any]:
+    """What the sidecar says: the sound's facts, and which hit of which pack it is."""
+    return {
+        **sound.facts,
+        "pack": {
+            "title": batch.title,
+            "name": hit.name,
+            "axes": dict(hit.axes),
+            "shares_gain_along": list(batch.together),
+        },
+        "recipe_digest": hit.recipe_digest,
+    }
+
+
+def is_done(plan: Plan, folder: Path, hit: Hit) -> bool:
+    """Whether the hit's files are there, whole, and of this very recipe."""
+    facts = read_sidecar(json_path(folder, hit.name))
+    if facts is None or facts.get("recipe_digest") != hit.recipe_digest:
+        return False
+    place = {"title": plan.title, "name": hit.name, "axes": dict(hit.axes), "shares_gain_along": list(plan.together)}
+    if facts.get("pack") != place:
+        return False
+    return pcm_digest_of_file(wav_path(folder, hit.name)) == facts.get("pcm", {}).get("sha256")

@@ -1,0 +1,28 @@
+"""Compile everything between a circuit and a file ahead of the first hit, so that workers find the code on disk."""
+
+from __future__ import annotations
+
+from kickrender import engine
+from kickrender.circuit import read_circuit_text
+from kickrender.sound.options import SoundOptions
+from kickrender.sound.render import hear_each
+
+# A resonance that is struck, so that every measurement finds something to measure.
+_BELL = """
+title = "warm-up"
+[inputs.gate]
+pulse = { rest = "0V", strike = "1V", length = "1ms" }
+[parts]
+C1 = { kind = "capacitor", value = "1u", between = ["gate", "out"] }
+L1 = { kind = "inductor", value = "1", between = ["out", "end"] }
+R1 = { kind = "resistor", value = "100", between = ["end", "ground"] }
+[output]
+net = "out"
+"""
+
+
+def warm_up() -> None:
+    """Render a tiny hit. Quick when the compiled code is on disk."""
+    engine.warm_up()
+    for _ in hear_each([(read_circuit_text(_BELL, "warm-up.toml"), {})], SoundOptions(length_s=0.1)):
+        pass

@@ -1,0 +1,165 @@
+"""Pack files: what they may say, and every fault told at once."""
+
+from pathlib import Path
+
+import pytest
+
+from kickrender.errors import InputError
+from kickrender.pack.read import read_pack, read_pack_text
+
+VOICE = """
+title = "Plain"
+[inputs.gate]
+pulse = { rest = "0V", strike = "5V", length = "4ms" }
+[inputs.accent]
+constant = "3V"
+[parts]
+R1 = { kind = "resistor", value = "47k", between = ["gate", "out"] }
+R2 = { kind = "resistor", value = "47k", between = ["accent", "out"] }
+C1 = { kind = "capacitor", value = "18n", between = ["out", "ground"] }
+P1 = { kind = "pot", value = "10k", at = 0.2, between = ["out", "ground"] }
+S1 = { kind = "switch", closed = true, between = ["out", "ground"] }
+[controls.tone]
+turns = "P1"
+[controls.accent]
+drives = "accent"
+from = "0V"
+to = "5V"
+start = "3V"
+[output]
+net = "out"
+"""
+
+PACK = """
+title = "Plain pack"
+circuit = "voice.toml"
+[sound]
+rate = "44.1k"
+format = "pcm16"
+[level]
+measure = "momentary"
+target = "-20 LUFS"
+ceiling = "-1 dBTP"
+together = ["accent"]
+[axes]
+tone = [0.1, 0.5]
+accent = { from = "1V", to = "5V", steps = 3 }
+[fixed]
+R1 = "4k7"
+[files]
+name = "{tone}/{accent}"
+"""
+
+
+@pytest.fixture
+def folder(tmp_path: Path) -> Path:
+    (tmp_path / "voice.toml").write_text(VOICE)
+    return tmp_path
+
+
+def faults_of(text: str, folder: Path) -> list[str]:
+    with pytest.raises(InputError) as caught:
+        read_pack_text(text, "p.toml", folder)
+    return [str(fault) for fault in caught.value.faults]
+
+
+def test_everything_a_pack_may_say(folder: Path) -> None:
+    pack = read_pack_text(PACK, "p.toml", folder)
+    assert pack.title == "Plain pack"
+    assert (pack.options.rate_hz, pack.options.format) == (44100, "pcm16")
+    assert pack.level is not None
+    assert (pack.level.measure, pack.level.target, pack.level.ceiling_dbtp) == ("momentary", -20.0, -1.0)
+    assert pack.together == ("accent",)
+    (block,) = pack.blocks
+    assert list(block.circuits) == ["voice.toml"]
+    assert block.fixed == {"R1": "4k7"}
+    tone, accent = block.axes
+    assert (tone.name, tone.values, tone.span) == ("tone", (0.1, 0.5), None)
+    assert (accent.name, accent.values, accent.span) == ("accent", (), ("1V", "5V", 3, "linear"))
+
+
+def test_a_pack_needs_little(folder: Path) -> None:
+    pack = read_pack_text('title = "t"\ncircuit = "voice.toml"\n[files]\nname = "only"', "p.toml", folder)
+    assert pack.level is None
+    assert pack.together == ()
+    assert pack.blocks[0].axes == ()
+
+
+def test_paths_start_at_the_pack_file(folder: Path) -> None:
+    (folder / "packs").mkdir()
+    (folder / "packs" / "p.toml").write_text(PACK.replace('"voice.toml"', '"../voice.toml"'))
+    assert read_pack(folder / "packs" / "p.toml").blocks[0].circuits["../voice.toml"].name == "voice"
+
+
+def test_blocks_add_to_and_replace_what_the_file_says(folder: Path) -> None:
+    text = PACK + (
+        "[[blocks]]\n[blocks.axes]\ntone = [0.9]\n"
+        '[[blocks]]\n[blocks.fixed]\naccent = "2V"\n[blocks.axes]\nR1 = ["1k"]\n'
+    )
+    first, second = read_pack_text(text, "p.toml", folder).blocks
+    assert [(axis.name, axis.values) for axis in first.axes] == [("tone", (0.9,)), ("accent", ())]
+    assert [axis.name for axis in second.axes] == ["tone", "R1"]
+    assert second.fixed == {"accent": "2V"}
+
+
+@pytest.mark.parametrize(
+    ("old", "new", "faults"),
+    [
+        ("[axes]", "[axis]", ["p.toml:12, axis: unknown key 'axis'; allowed: title, about, circuit, sound, level, axes, "
+                              "fixed, files, blocks; did you mean 'axes'?",
+                              "p.toml:11, level.together: no axis 'accent'; allowed: circuit"]),
+        ('title = "Plain pack"', "", ["p.toml, title: key 'title' is missing; allowed: a text in quotes"]),
+        ('"voice.toml"', '"voic.toml"', ["FOLDER/voic.toml: cannot read FOLDER/voic.toml: No such file or directory; "
+                                         "allowed: a circuit file that can be read"]),
+        ('circuit = "voice.toml"', "", ["p.toml, circuit: key 'circuit' is missing; allowed: a circuit's name or path, or "
+                                        "a list of them"]),
+        ('circuit = "voice.toml"', 'circuit = ["voice.toml", "voice.toml"]',
+         ["p.toml:3, circuit: circuit 'voice.toml' twice; allowed: each circuit once"]),
+        ('"44.1k"', '"44.1 V"', ["p.toml:5, sound.rate: '44.1 V' has the unit V, not Hz; allowed: a value in Hz ('100Hz', "
+                                 "'3 MHz')"]),
+        ('"pcm16"', '"pcm8"', ["p.toml:6, sound.format: unknown word 'pcm8'; allowed: pcm16, pcm24, float32; did you mean "
+                               "'pcm24'?"]),
+        ('["accent"]', '["acent"]', ["p.toml:11, level.together: no axis 'acent'; allowed: circuit, tone, accent; did you "
+                                     "mean 'accent'?"]),
+        ("[0.1, 0.5]", "0.1", ["p.toml:13, axes.tone: 0.1; allowed: a list of values, or { from, to, steps, law }"]),
+        ("[0.1, 0.5]", "[]", ["p.toml:13, axes.tone: an empty list; allowed: a list of values, or { from, to, steps, law }"]),
+        ("[0.1, 0.5]", "[[0.1]]", ["p.toml:13, axes.tone: a list; allowed: a number, a text such as '4.7k', or true or "
+                                   "false"]),
+        ("steps = 3", "step = 3", ["p.toml:14, axes.accent.step: unknown key 'step'; allowed: from, to, steps, law; did "
+                                   "you mean 'steps'?",
+                                   "p.toml:14, axes.accent: key 'steps' is missing; allowed: { from, to, steps, law }"]),
+        ("steps = 3", "steps = 1", ["p.toml:14, axes.accent.steps: 1; allowed: a whole number from 2 to 10000"]),
+        ("steps = 3", 'steps = 3, law = "log"', ["p.toml:14, axes.accent.law: unknown word 'log'; allowed: linear, "
+                                                 "geometric"]),
+        ("R1 =", "tone =", ["p.toml:13, axes.tone: 'tone' is both an axis and fixed; allowed: one of the two"]),
+        ("name = \"{tone}/{accent}\"", "", ["p.toml:17, files.name: key 'name' is missing; allowed: a template such as "
+                                            "\"{pitch}/{decay}-{accent}\""]),
+        ("title =", "title", ["p.toml:2: not TOML: expected '=' after a key in a key/value pair; allowed: TOML, with "
+                              'values that hold letters in quotes ("47k")']),
+    ],
+)  # fmt: skip
+def test_a_wrong_pack_is_told(old: str, new: str, faults: list[str], folder: Path) -> None:
+    assert old in PACK
+    assert faults_of(PACK.replace(old, new, 1), folder) == [f.replace("FOLDER", str(folder)) for f in faults]
+
+
+def test_every_fault_at_once(folder: Path) -> None:
+    text = PACK.replace('"44.1k"', "1").replace("steps = 3", "steps = 0").replace('"{tone}/{accent}"', "7")
+    assert [fault.split(":")[1].split(", ")[1] for fault in faults_of(text, folder)] == [
+        "sound.rate",
+        "files.name",
+        "axes.accent.steps",
+    ]
+
+
+def test_a_fault_in_a_block_names_its_line(folder: Path) -> None:
+    text = PACK + "[[blocks]]\n[[blocks]]\naxis = 3\n"
+    line = text.splitlines().index("axis = 3") + 1
+    assert faults_of(text, folder) == [
+        f"p.toml:{line}, blocks.1.axis: unknown key 'axis'; allowed: circuit, axes, fixed; did you mean 'axes'?"
+    ]
+
+
+def test_an_unknown_shipped_pack() -> None:
+    with pytest.raises(InputError, match=r"^pack 'nigt-ferry': no pack 'nigt-ferry'; allowed: a shipped pack"):
+        read_pack("nigt-ferry")
