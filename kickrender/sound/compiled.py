@@ -115,7 +115,7 @@ def half_cycles(samples: Floats, least: float, crossings: Floats, peaks: Floats,
         ended = k == len(samples)
         if not ended and samples[k] == 0.0:
             continue
-        if last >= 0 and (ended or samples[k] * samples[last] < 0.0):
+        if last >= 0 and (ended or (samples[k] > 0.0) != (samples[last] > 0.0)):
             crossings[count], peaks[count], peak_places[count] = begin, swing, place
             count = _swallow_ripple(least, crossings, peaks, peak_places, count)
             swing = 0.0

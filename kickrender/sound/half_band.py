@@ -18,7 +18,7 @@ _CHUNK = 512  # sums worked on at once: they stay in the fastest cache while the
 
 @kernel
 def symmetric_sums(values: Floats, taps: Floats, sums: Floats) -> None:
-    """sums[i] = sum over j of taps[j] (values[i + m - 1 - j] + values[i + m + j]).
+    """sums[i] += sum over j of taps[j] (values[i + m - 1 - j] + values[i + m + j]).
 
     Parameters
     ----------
@@ -32,7 +32,6 @@ def symmetric_sums(values: Floats, taps: Floats, sums: Floats) -> None:
     for start in range(0, n, _CHUNK):
         width = min(_CHUNK, n - start)
         total = sums[start : start + width]
-        total[:] = 0.0
         for j in range(0, m, 4):
             # Four taps per pass: each pass reads and writes the running totals once.
             t0, t1, t2, t3 = taps[j], taps[j + 1], taps[j + 2], taps[j + 3]
@@ -58,12 +57,15 @@ def halve(signal: Floats, taps: Floats, halved: Floats) -> None:
     halved : array of float, shape (n,)
         Changed in place.
     """
-    m = len(taps)
-    even = signal[0::2].copy()
-    odd = signal[1::2].copy()
+    m, n = len(taps), len(halved)
+    # Taken apart first, so that the sums run over neighbours in memory.
+    even = np.empty(n + 2 * m - 1)
+    for i in range(n + 2 * m - 1):
+        even[i] = signal[2 * i]
+    middle = signal[2 * m - 1 :]
+    for i in range(n):
+        halved[i] = 0.5 * middle[2 * i]
     symmetric_sums(even, taps, halved)
-    for i in range(len(halved)):
-        halved[i] += 0.5 * odd[i + m - 1]
 
 
 @kernel
@@ -78,7 +80,7 @@ def double(signal: Floats, taps: Floats, doubled: Floats) -> None:
         doubled[2 i] = signal[i + m - 1], doubled[2 i + 1] lies half a sample later. Changed in place.
     """
     m, n = len(taps), len(doubled) // 2
-    between = np.empty(n)
+    between = np.zeros(n)
     symmetric_sums(signal, taps, between)
     for i in range(n):
         doubled[2 * i] = signal[i + m - 1]

@@ -21,7 +21,7 @@ from numpy.typing import NDArray
 Floats = NDArray[np.float64]
 
 WINDOW_S = 0.4  # BS.1770's gating block, Tech 3341's momentary window
-HOP_S = 0.1  # BS.1770: blocks overlap by 75 %
+BLOCKS_PER_S = 10  # BS.1770: blocks overlap by 75 %
 ABSOLUTE_GATE_LUFS = -70.0
 RELATIVE_GATE_LU = -10.0
 OFFSET_DB = -0.691  # cancels the K-weighting's gain at 997 Hz
@@ -74,8 +74,8 @@ def loudness(samples: Floats, rate_hz: float) -> Loudness:
 
 def _integrated(energy: Floats, count: int, window: int, rate_hz: float) -> float | None:
     """Gated loudness from the running energy of `count` samples and their ring-out."""
-    blocks = 1 + max(0, math.floor((count - window) / (HOP_S * rate_hz)))
-    starts = np.array([int(block * HOP_S * rate_hz) for block in range(blocks)])
+    blocks = 1 + max(0, math.floor((count - window) * BLOCKS_PER_S / rate_hz))
+    starts = np.array([math.floor(block * rate_hz / BLOCKS_PER_S) for block in range(blocks)])
     ends = np.minimum(starts + window, len(energy) - 1)
     mean_squares = (energy[ends] - energy[starts]) / (WINDOW_S * rate_hz)
     loud = mean_squares[mean_squares > 10 ** ((ABSOLUTE_GATE_LUFS - OFFSET_DB) / 10)]

@@ -18,6 +18,7 @@ Floats = NDArray[np.float64]
 
 CONCERT_PITCH_HZ = 440.0  # A4 of ISO 16
 NOTE_NAMES = ("C", "C#", "D", "D#", "E", "F", "F#", "G", "G#", "A", "A#", "B")
+SILENCE = 1e-9  # of full scale, -180 dB: a sound that never passes this is silent
 OFFSET_S = 0.1  # the end of a sound over which its offset is taken
 
 # Library results may differ in their last bits from one machine to another; what is read off here may set a gain
@@ -82,7 +83,7 @@ def measure(samples: Floats, rate_hz: float, concert_pitch_hz: float = CONCERT_P
     samples = checked_samples(samples)
     length = _rounded(len(samples) / rate_hz, SECOND_DIGITS)
     peak = float(np.abs(samples).max())
-    if peak == 0.0:
+    if peak < SILENCE:
         return Measurements(length_s=length, offset=0.0)
     heard = loudness(samples, rate_hz)
     tone = pitch(samples, rate_hz)

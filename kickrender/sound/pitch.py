@@ -28,6 +28,7 @@ ONSET = 0.01  # of the largest swing: where the sound begins
 START_WITHIN_S = 0.010  # half cycles that begin this soon after the onset may hold the start of a drop
 
 FLOOR_DB = -50.0  # below the largest swing nothing is read
+GAP = 1e-6  # of the loudest window: silence between two strikes
 SETTLED_SPREAD = 0.003  # a pitch this far from the settled one, as a ratio, counts a quarter
 SETTLING_ROUNDS = 4  # each round moves several times closer
 
@@ -98,7 +99,7 @@ def _smoothed(samples: Floats, factor: int, rate_hz: float) -> Floats:
     width = SMOOTHING_S * rate_hz / factor
     m = 4 * math.ceil(4 * width / 4)
     bell = np.array([math.exp(-0.5 * ((j + 0.5) / width) ** 2) for j in range(m)])
-    smooth = np.empty(count)
+    smooth = np.zeros(count)
     symmetric_sums(padded_part(averages, 1 - m, count + m), bell / (2 * factor * bell.sum()), smooth)
     return smooth
 
@@ -139,12 +140,19 @@ def _settled(smooth: Floats, rate: float, first: float, last: float, guess_hz: f
         correlate(smooth[begin:end], window * np.cos(turn * k), hop, real)
         correlate(smooth[begin:end], window * -np.sin(turn * k), hop, imaginary)
         heard = real + 1j * imaginary
-        step = heard[1:] * np.conj(heard[:-1]) * np.exp(-1j * turn * hop)
+        before, after = heard[:-1], heard[1:]
+        sounding = np.minimum(np.abs(before), np.abs(after)) > GAP * np.abs(heard).max()
+        if not sounding.any():
+            return guess_hz
+        before, after = before[sounding], after[sounding]
+        step = after * np.conj(before) * np.exp(-1j * turn * hop)
         hz = settled + np.angle(step) * rate / (2 * np.pi * hop)
         level = np.abs(step)
         for _ in range(SETTLING_ROUNDS):
             weights = np.sqrt(level) / (1 + ((hz / settled - 1) / SETTLED_SPREAD) ** 2) ** 2
             settled = float((weights * hz).sum() / weights.sum())
-        fall = -np.log(np.abs(heard[1:] / heard[:-1])) / hop
+        if not guess_hz / 2 < settled < guess_hz * 2:  # noise: no fundamental to follow
+            return guess_hz
+        fall = -np.log(np.abs(after / before)) / hop
         decay = min(max(float((weights * fall).sum() / weights.sum()), 0.0), 3 / length)
     return settled
