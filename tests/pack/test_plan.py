@@ -93,12 +93,12 @@ def test_switches_are_on_or_off_in_names(folder: Path) -> None:
     ("old", "new", "faults"),
     [
         ("tone = [", "tne = [", [
-            "p.toml:18, files.name: unknown field '{tone}'; allowed: {tne}, {accent}, {circuit}, {number}; did you mean "
-            "'tne'?",
-            "p.toml:13, axes.tne (circuit 'voice'): unknown setting 'tne'; allowed: a control (tone, accent), a part, an "
-            "input or temperature; did you mean 'tone'?",
-            "p.toml:13, axes.tne (circuit 'voice'): unknown setting 'tne'; allowed: a control (tone, accent), a part, an "
-            "input or temperature; did you mean 'tone'?"]),
+            "p.toml:18, files.name: unknown field '{tone}'; allowed: {tne}, {accent}, {circuit}, {number}; did you "
+            "mean 'tne'?",
+            "p.toml:13, axes.tne (circuit 'voice'): unknown setting 'tne'; allowed: a control (tone, accent), a part, "
+            "an input or temperature; did you mean 'tone'?",
+            "p.toml:13, axes.tne (circuit 'voice'): unknown setting 'tne'; allowed: a control (tone, accent), a part, "
+            "an input or temperature; did you mean 'tone'?"]),
         ("0.5]", "1.5]", ["p.toml:13, axes.tone (circuit 'voice'): 1.5 is out of range; allowed: 0 to 1"]),
         ('"5V"', '"7V"', ["p.toml:14, axes.accent (circuit 'voice'): '7V' is out of range; allowed: 0V to 5V"]),
         ('"4k7"', '"4n7"', ["p.toml:16, fixed.R1 (circuit 'voice'): '4n7' is a letter code that does not go with ohm; "
@@ -109,8 +109,8 @@ def test_switches_are_on_or_off_in_names(folder: Path) -> None:
         ("{tone}/", "../{tone}", [
             f"p.toml:18, files.name: '../{tone}{accent}V' climbs out of the pack's folder; allowed: a relative path"
             for tone in (0.1, 0.5) for accent in (1, 3, 5)][:5] + ["p.toml:18, files.name: and 1 more of this kind"]),
-        ("{tone}/", "{tone:d}/", ["p.toml:18, files.name: '{tone:d}/{accent}': Unknown format code 'd' for object of type "
-                                  "'float'; allowed: a number format such as {number:03d}"]),
+        ("{tone}/", "{tone:d}/", ["p.toml:18, files.name: '{tone:d}/{accent}': Unknown format code 'd' for object of "
+                                  "type 'float'; allowed: a number format such as {number:03d}"]),
         ('from = "1V"', 'law = "geometric", from = "0V"', ["p.toml:14, axes.accent: a geometric range from 0V to 5V; "
                                                            "allowed: two values above 0"]),
     ],

@@ -105,29 +105,31 @@ def test_blocks_add_to_and_replace_what_the_file_says(folder: Path) -> None:
 @pytest.mark.parametrize(
     ("old", "new", "faults"),
     [
-        ("[axes]", "[axis]", ["p.toml:12, axis: unknown key 'axis'; allowed: title, about, circuit, sound, level, axes, "
-                              "fixed, files, blocks; did you mean 'axes'?",
+        ("[axes]", "[axis]", ["p.toml:12, axis: unknown key 'axis'; allowed: title, about, circuit, sound, level, "
+                              "axes, fixed, files, blocks; did you mean 'axes'?",
                               "p.toml:11, level.together: no axis 'accent'; allowed: circuit"]),
         ('title = "Plain pack"', "", ["p.toml, title: key 'title' is missing; allowed: a text in quotes"]),
         ('"voice.toml"', '"voic.toml"', ["FOLDER/voic.toml: cannot read FOLDER/voic.toml: No such file or directory; "
                                          "allowed: a circuit file that can be read"]),
-        ('circuit = "voice.toml"', "", ["p.toml, circuit: key 'circuit' is missing; allowed: a circuit's name or path, or "
-                                        "a list of them"]),
+        ('circuit = "voice.toml"', "", ["p.toml, circuit: key 'circuit' is missing; allowed: a circuit's name or path, "
+                                        "or a list of them"]),
         ('circuit = "voice.toml"', 'circuit = ["voice.toml", "voice.toml"]',
          ["p.toml:3, circuit: circuit 'voice.toml' twice; allowed: each circuit once"]),
-        ('"44.1k"', '"44.1 V"', ["p.toml:5, sound.rate: '44.1 V' has the unit V, not Hz; allowed: a value in Hz ('100Hz', "
-                                 "'3 MHz')"]),
-        ('"pcm16"', '"pcm8"', ["p.toml:6, sound.format: unknown word 'pcm8'; allowed: pcm16, pcm24, float32; did you mean "
-                               "'pcm24'?"]),
-        ('["accent"]', '["acent"]', ["p.toml:11, level.together: no axis 'acent'; allowed: circuit, tone, accent; did you "
-                                     "mean 'accent'?"]),
+        ('"44.1k"', '"44.1 V"', ["p.toml:5, sound.rate: '44.1 V' has the unit V, not Hz; allowed: a value in Hz "
+                                 "('100Hz', '3 MHz')"]),
+        ('"pcm16"', '"pcm8"', ["p.toml:6, sound.format: unknown word 'pcm8'; allowed: pcm16, pcm24, float32; did you "
+                               "mean 'pcm24'?"]),
+        ('["accent"]', '["acent"]', ["p.toml:11, level.together: no axis 'acent'; allowed: circuit, tone, accent; did "
+                                     "you mean 'accent'?"]),
         ("[0.1, 0.5]", "0.1", ["p.toml:13, axes.tone: 0.1; allowed: a list of values, or { from, to, steps, law }"]),
-        ("[0.1, 0.5]", "[]", ["p.toml:13, axes.tone: an empty list; allowed: a list of values, or { from, to, steps, law }"]),
+        ("[0.1, 0.5]", "[]", ["p.toml:13, axes.tone: an empty list; allowed: a list of values, or { from, to, steps, "
+                              "law }"]),
         ("[0.1, 0.5]", "[[0.1]]", ["p.toml:13, axes.tone: a list; allowed: a number, a text such as '4.7k', or true or "
                                    "false"]),
-        ("steps = 3", "step = 3", ["p.toml:14, axes.accent.step: unknown key 'step'; allowed: from, to, steps, law; did "
-                                   "you mean 'steps'?",
-                                   "p.toml:14, axes.accent: key 'steps' is missing; allowed: { from, to, steps, law }"]),
+        ("steps = 3", "step = 3", ["p.toml:14, axes.accent.step: unknown key 'step'; allowed: from, to, steps, law; "
+                                   "did you mean 'steps'?",
+                                   "p.toml:14, axes.accent: key 'steps' is missing; allowed: { from, to, steps, "
+                                   "law }"]),
         ("steps = 3", "steps = 1", ["p.toml:14, axes.accent.steps: 1; allowed: a whole number from 2 to 10000"]),
         ("steps = 3", 'steps = 3, law = "log"', ["p.toml:14, axes.accent.law: unknown word 'log'; allowed: linear, "
                                                  "geometric"]),
