@@ -78,7 +78,7 @@ class Circuit:
             "format": DIGEST_FORMAT,
             "temperature_k": self.temperature_k,
             "nets": dict(self.nets),
-            "inputs": {name: {type(wave).__name__.lower(): asdict(wave)} for name, wave in self.inputs.items()},
+            "inputs": {name: {type(wave).__name__.lower(): _written(wave)} for name, wave in self.inputs.items()},
             "parts": {name: _electrical(part) for name, part in self.parts.items()},
             "controls": {
                 name: {key: getattr(control, key) for key in ("act", "target", "low", "high", "start", "law")}
@@ -89,6 +89,11 @@ class Circuit:
         }
         text = json.dumps(content, sort_keys=True, separators=(",", ":"), ensure_ascii=True, allow_nan=False)
         return hashlib.sha256(text.encode("ascii")).hexdigest()
+
+
+def _written(wave: Wave) -> dict[str, object]:
+    """What a file says of a wave; further strikes are not a circuit's but a hit's."""
+    return {key: value for key, value in asdict(wave).items() if key != "starts"}
 
 
 def _electrical(part: Part) -> dict[str, object]:

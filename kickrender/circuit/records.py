@@ -29,13 +29,17 @@ class Model:
 
 @dataclass(frozen=True)
 class Pulse:
-    """Rises from `rest` at t = 0 over `rise`, falls over `fall` from `length` after the rise began. [V], [s]"""
+    """Rises from `rest` at t = 0 over `rise`, falls over `fall` from `length` after the rise began. [V], [s]
+
+    starts : when it rises; every pulse is over before the next begins.
+    """
 
     rest: float
     strike: float
     length: float
     rise: float = 2e-6
     fall: float = 2e-6
+    starts: tuple[float, ...] = (0.0,)
 
 
 @dataclass(frozen=True)

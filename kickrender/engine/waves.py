@@ -29,11 +29,11 @@ def corners(wave: Wave) -> tuple[list[float], list[float]]:
     """Times and voltages of the piecewise linear part; constant before the first and after the last."""
     match wave:
         case Pulse():
-            times = [0.0, wave.rise, wave.length, wave.length + wave.fall]
+            offsets = [0.0, wave.rise, wave.length, wave.length + wave.fall]
             volts = [wave.rest, wave.strike, wave.strike, wave.rest]
             if wave.length == wave.rise:
-                del times[1], volts[1]
-            return times, volts
+                del offsets[1], volts[1]
+            return [start + offset for start in wave.starts for offset in offsets], volts * len(wave.starts)
         case Constant():
             return [0.0], [wave.level]
         case Sine():
