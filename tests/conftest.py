@@ -14,8 +14,7 @@ def pytest_configure(config: pytest.Config) -> None:
 
 WARM_UP = """
 import sys
-from kickrender import engine
-if hasattr(engine, "warm_up"):
-    print("making sure that the solver is compiled (once, up to a minute) ...", file=sys.stderr, flush=True)
-    engine.warm_up()
+print("making sure that the solver is compiled (once, up to a minute) ...", file=sys.stderr, flush=True)
+from kickrender.sound.warm_up import warm_up
+warm_up()
 """

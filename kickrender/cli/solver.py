@@ -6,11 +6,9 @@ from kickrender.cli.settings import note
 
 
 def ready_solver() -> None:
-    """Load the solver; the first run on a machine compiles it, which takes long enough to say so."""
-    from kickrender import engine
+    """Compile the solver when it is not on disk yet: the first run on a machine, which takes long enough to say so."""
+    from kickrender.sound.warm_up import is_compiled, warm_up
 
-    if not engine.is_compiled():
+    if not is_compiled():
         note("compiling the solver for this machine (the first run only, up to a minute) ...")
-        from kickrender.sound.warm_up import warm_up
-
         warm_up()

@@ -2,8 +2,12 @@
 
 from __future__ import annotations
 
+from pathlib import Path
+
 from kickrender import engine
 from kickrender.circuit import read_circuit_text
+from kickrender.engine.compile import cache_folder
+from kickrender.sound import compiled, half_band
 from kickrender.sound.options import SoundOptions
 from kickrender.sound.render import hear_each
 
@@ -26,3 +30,9 @@ def warm_up() -> None:
     engine.warm_up()
     for _ in hear_each([(read_circuit_text(_BELL, "warm-up.toml"), {})], SoundOptions(length_s=0.1)):
         pass
+
+
+def is_compiled() -> bool:
+    """Whether this version's compiled code is on disk already; if not, the first hit waits for it."""
+    own = [cache_folder(Path(str(module.__file__))) for module in (compiled, half_band)]
+    return engine.is_compiled() and all(any(folder.rglob("*.nbc")) for folder in own)
