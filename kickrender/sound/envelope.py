@@ -35,9 +35,9 @@ def _first_reach(magnitude: Floats, level: float) -> float:
 def decay_s(samples: Floats, rate_hz: float, drop_db: float = DECAY_DB) -> float | None:
     """Time from the peak until the sound has died by `drop_db` for good; None when it never does. [s]
 
-    The envelope has one point per half cycle, the swing smoothed over both polarities, joined by straight lines in
-    dB: so it moves evenly with a control, where the last sample above the level would jump from one half cycle to the
-    next. A sound that ends without crossing zero again is followed sample by sample.
+    The envelope has one point per half cycle, joined by straight lines in dB: so it moves evenly with a control, where
+    the last sample above the level would jump from one half cycle to the next. A sound that ends without crossing
+    zero again is followed sample by sample.
 
     Parameters
     ----------
@@ -58,15 +58,18 @@ def decay_s(samples: Floats, rate_hz: float, drop_db: float = DECAY_DB) -> float
     top = int(np.argmax(magnitude))
     level = float(magnitude[top]) * 10 ** (-drop_db / 20)
     last = int(np.flatnonzero(magnitude >= level)[-1])
-    if last == len(samples) - 1:
-        return None
     if count >= 3:
         peaks, places = peaks[:count], places[:count]
-        swings = np.sqrt(peaks[1:-1] * np.sqrt(peaks[:-2] * peaks[2:]))
+        # A lopsided wave swings farther to one side: its neighbours say where it would be on the other.
+        swings = np.maximum(peaks[1:-1], np.sqrt(peaks[:-2] * peaks[2:]))
         above = np.flatnonzero(swings >= level)
         if len(above) and above[-1] < len(swings) - 1:
-            k = above[-1]
+            k = int(above[-1])
             share = math.log(swings[k] / level) / math.log(swings[k] / swings[k + 1])
             return float(places[k + 1] + share * (places[k + 2] - places[k + 1]) - top) / rate_hz
+        if len(samples) - last < crossings[count] - crossings[count - 2]:
+            return None  # below the level for less than a period: it may only be crossing zero
+    if last == len(samples) - 1:
+        return None
     share = math.log(magnitude[last] / level) / math.log(magnitude[last] / max(magnitude[last + 1], 1e-300))
     return (last + share - top) / rate_hz
