@@ -50,7 +50,7 @@ def hyperbolic_tangent(x):
     x minus a small correction with one division. Above: 1 - 2/(e^2|x| + 1), computed only if a lane needs it.
     """
     magnitude = pick_less(x, 0.0, 0.0 - x, x)
-    z = pick_less(magnitude, 1.0, magnitude, 1.0)
+    z = pick_less(1.0, magnitude, 1.0, magnitude)  # in this order, so that what is not a number stays so
     s = z * z
     # 3 + s/(5 + s/(7 + ...(17 + s/19))) = p/q
     p = 654729075.0 + s * (91891800.0 + s * (2837835.0 + s * (25740.0 + s * 55.0)))
@@ -58,7 +58,7 @@ def hyperbolic_tangent(x):
     small = z - z * (s * q / (p + s * q))
     result = small
     if any_less(1.0, magnitude):
-        bounded = pick_less(magnitude, 20.0, magnitude, 20.0)  # tanh 20 rounds to 1
+        bounded = pick_less(20.0, magnitude, 20.0, magnitude)  # tanh 20 rounds to 1
         large = 1.0 - 2.0 / (exponential(bounded + bounded) + 1.0)
         result = pick_less(1.0, magnitude, large, small)
     return pick_less(x, 0.0, 0.0 - result, result)
