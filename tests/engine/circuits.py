@@ -1,0 +1,97 @@
+"""Small circuits for the engine's tests, written as their users write them: circuit text through the reader."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from kickrender.circuit import ResolvedCircuit, read_circuit_text
+
+IDEAL_OPAMP = (
+    '{ kind = "opamp", gain_bandwidth = "%s", slew_rate = "1e12", headroom_high = "0V", headroom_low = "0V", '
+    "dc_gain = 1e12 }"
+)
+
+
+def circuit(
+    parts: dict[str, str],
+    *,
+    inputs: dict[str, str] | None = None,
+    nets: dict[str, str] | None = None,
+    models: dict[str, str] | None = None,
+    output: str = "out",
+    temperature: str = "25C",
+    name: str = "test",
+) -> ResolvedCircuit:
+    """A resolved circuit from its lines.
+
+    parts : name -> "kind value a b" with nets in the order of the kind's terminals (diode anode cathode, transistor
+        collector base emitter, op-amp plus minus out high low); value is a value, a model's name, or true or false.
+    inputs, models : name -> the right-hand side of its line in a circuit file. nets : name -> voltage.
+    """
+    lines = ['title = "test"', f'temperature = "{temperature}"', "[nets]"]
+    lines += [f'{net} = "{volts}"' for net, volts in (nets or {}).items()]
+    for net, wave in (inputs or {}).items():
+        lines += [f"[inputs.{net}]", wave]
+    lines.append("[parts]")
+    lines += [f"{part} = {_table(*text.split())}" for part, text in parts.items()]
+    lines.append("[models]")
+    lines += [f"{model} = {text}" for model, text in (models or {}).items()]
+    lines += ["[output]", f'net = "{output}"', 'full_scale = "1V"']
+    return read_circuit_text("\n".join(lines), name + ".toml").resolve()
+
+
+def _table(kind: str, value: str, *nets: str) -> str:
+    quoted = [f'"{net}"' for net in nets]
+    if kind == "diode":
+        return '{ kind = "diode", model = "%s", anode = %s, cathode = %s }' % (value, *quoted)
+    if kind in ("npn", "pnp"):
+        return '{ kind = "%s", model = "%s", collector = %s, base = %s, emitter = %s }' % (kind, value, *quoted)
+    if kind == "opamp":
+        return '{ kind = "opamp", model = "%s", plus = %s, minus = %s, out = %s, rails = [%s, %s] }' % (value, *quoted)
+    if kind == "switch":
+        return '{ kind = "switch", closed = %s, between = [%s, %s] }' % (value, *quoted)
+    return '{ kind = "%s", value = "%s", between = [%s, %s] }' % (kind, value, *quoted)
+
+
+RAILS = {"plus": "12V", "minus": "-12V"}
+STRIKE = 'pulse = { rest = "0V", strike = "5V", length = "4ms", rise = "2us", fall = "2us" }'
+
+
+def rc(wave: str, ohm: str = "10k", farad: str = "100n") -> ResolvedCircuit:
+    """A low-pass from input `in` to `out`."""
+    return circuit({"R": f"resistor {ohm} in out", "C": f"capacitor {farad} out ground"}, inputs={"in": wave})
+
+
+def ladder(count: int, wave: str = STRIKE, ohm: str = "1k", farad: str = "10n") -> ResolvedCircuit:
+    """`count` low-pass sections in a row; the output is the last net."""
+    parts = {}
+    for k in range(count):
+        before = "in" if k == 0 else f"n{k - 1}"
+        parts[f"R{k}"] = f"resistor {ohm} {before} n{k}"
+        parts[f"C{k}"] = f"capacitor {farad} n{k} ground"
+    return circuit(parts, inputs={"in": wave}, output=f"n{count - 1}")
+
+
+def resonator(q_leg: str = "1k", wave: str = STRIKE) -> ResolvedCircuit:
+    """An op-amp bridged-T struck into its leg through a resistor, with a diode clipper on its way out."""
+    return circuit(
+        {
+            "Rs": "resistor 100k gate leg",
+            "Rl": f"resistor {q_leg} leg ground",
+            "C1": "capacitor 15n ring leg",
+            "C2": "capacitor 15n leg sum",
+            "Rb": "resistor 1M ring sum",
+            "U": "opamp fet-input ground sum ring plus minus",
+            "Ro": "resistor 4k7 ring out",
+            "D1": "diode silicon out ground",
+            "D2": "diode silicon ground out",
+        },
+        inputs={"gate": wave},
+        nets=RAILS,
+    )
+
+
+def residual_db(found: np.ndarray, truth: np.ndarray) -> float:
+    """RMS of the difference over the peak of the truth. [dB]"""
+    rms = np.sqrt(np.mean((found - truth) ** 2))
+    return float(20.0 * np.log10(max(rms, 1e-300) / np.max(np.abs(truth))))
