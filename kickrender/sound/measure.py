@@ -174,6 +174,6 @@ def _maybe(value: float | None, digits: int) -> float | None:
 
 
 def _easy_length(count: int) -> int:
-    """The next length whose transform is quick: a power of two, or three or five eighths... of one."""
-    power = 1 << max(0, count - 1).bit_length()
-    return min((length for length in (power * 5 // 8, power * 3 // 4, power) if length >= count), default=power)
+    """An even length, not much longer, whose transform is quick: a power of two, or 5/8 or 3/4 of one."""
+    power = max(16, 1 << (count - 1).bit_length())
+    return min((length for length in (power * 5 // 8, power * 3 // 4, power) if length >= count))
