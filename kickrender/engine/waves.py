@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 
 import numpy as np
@@ -45,7 +46,7 @@ def corners(wave: Wave) -> tuple[list[float], list[float]]:
 
 def segments_of(waves: list[Wave], length_s: float) -> Segments:
     """Break the waves at every corner of any of them before `length_s`."""
-    lines = [corners(wave) for wave in waves]
+    lines = [(_apart(times), levels) for times, levels in map(corners, waves)]
     breaks = sorted({time for times, _ in lines for time in times if 0.0 < time < length_s})
     end = np.array([*breaks, length_s])
     start = np.array([0.0, *breaks])
@@ -69,3 +70,10 @@ def segments_of(waves: list[Wave], length_s: float) -> Segments:
         if isinstance(wave, Sine):
             sines[m] = wave.amplitude, wave.frequency, wave.phase_deg / 360.0
     return Segments(end, volts, slope, sines)
+
+
+def _apart(times: list[float]) -> list[float]:
+    """The same times, those too close to be told apart moved one float on: a slope between them stays finite."""
+    for index in range(1, len(times)):
+        times[index] = max(times[index], math.nextafter(times[index - 1], math.inf))
+    return times
