@@ -2,14 +2,26 @@
 
 from __future__ import annotations
 
+import json
+
 import numpy as np
 
 from kickrender.circuit import ResolvedCircuit, read_circuit_text
 
-IDEAL_OPAMP = (
-    '{ kind = "opamp", gain_bandwidth = "%s", slew_rate = "1e12", headroom_high = "0V", headroom_low = "0V", '
-    "dc_gain = 1e12 }"
-)
+TERMINALS = {
+    "diode": ("anode", "cathode"),
+    "npn": ("collector", "base", "emitter"),
+    "pnp": ("collector", "base", "emitter"),
+    "opamp": ("plus", "minus", "out"),
+}
+
+
+def ideal_opamp(gain_bandwidth_hz: float) -> str:
+    """A model without limits but its gain-bandwidth product."""
+    return (
+        f'{{ kind = "opamp", gain_bandwidth = {gain_bandwidth_hz!r}, slew_rate = 1e12, headroom_high = 0, '
+        "headroom_low = 0, dc_gain = 1e12 }"
+    )
 
 
 def circuit(
@@ -41,16 +53,16 @@ def circuit(
 
 
 def _table(kind: str, value: str, *nets: str) -> str:
-    quoted = [f'"{net}"' for net in nets]
-    if kind == "diode":
-        return '{ kind = "diode", model = "%s", anode = %s, cathode = %s }' % (value, *quoted)
-    if kind in ("npn", "pnp"):
-        return '{ kind = "%s", model = "%s", collector = %s, base = %s, emitter = %s }' % (kind, value, *quoted)
-    if kind == "opamp":
-        return '{ kind = "opamp", model = "%s", plus = %s, minus = %s, out = %s, rails = [%s, %s] }' % (value, *quoted)
-    if kind == "switch":
-        return '{ kind = "switch", closed = %s, between = [%s, %s] }' % (value, *quoted)
-    return '{ kind = "%s", value = "%s", between = [%s, %s] }' % (kind, value, *quoted)
+    fields: dict[str, object] = {"kind": kind}
+    if kind in TERMINALS:
+        roles = TERMINALS[kind]
+        fields |= {"model": value, **dict(zip(roles, nets, strict=False))}
+        if kind == "opamp":
+            fields["rails"] = nets[3:]
+    else:
+        fields |= {"closed": value == "true"} if kind == "switch" else {"value": value}
+        fields["between"] = nets
+    return "{ " + ", ".join(f"{key} = {json.dumps(field)}" for key, field in fields.items()) + " }"
 
 
 RAILS = {"plus": "12V", "minus": "-12V"}
