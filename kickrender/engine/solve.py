@@ -7,7 +7,7 @@ arithmetic is its own (see stepper), and an order of elimination follows from th
 from __future__ import annotations
 
 import functools
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -36,6 +36,7 @@ _ROOM = 4000  # steps kept for any hit, and then per second of it
 _ROOM_PER_SECOND = 8000
 _MOST_STEPS_PER_HIT = 2_000_000
 _MOST_PLANS = 50
+_CONSISTENT_V = 1e-3  # a start state still moves by less in the last iteration: large currents into picofarads
 
 
 @dataclass(frozen=True, eq=False)
@@ -48,6 +49,7 @@ class _Hit:
     segments: Segments
     length_s: float
     probes: tuple[str, ...]
+    start: Mapping[str, float] | None = None
 
 
 def solve(
@@ -56,6 +58,7 @@ def solve(
     *,
     probes: Sequence[str] = (),
     tolerance: float = DEFAULT_TOLERANCE,
+    start: Mapping[str, float] | None = None,
 ) -> Solution:
     """Strike a circuit and follow it for `length_s`.
 
@@ -65,6 +68,9 @@ def solve(
     length_s : how long to follow it. [s]
     probes : further nets to keep beside the output.
     tolerance : error allowed in one step, relative to each voltage.
+    start : net -> voltage at t = 0 (inductor current under the name `rest_state` gives it), in place of the rest
+        state; nets left out start at rest. Charges on capacitors follow from it; nets without a charge of their
+        own move to where their currents balance. [V], [A]
 
     Returns
     -------
@@ -74,8 +80,11 @@ def solve(
     ------
     SolveError
         With the named reason, circuit, time, step, worst net and advice.
+    ValueError
+        If a probe or a net of `start` is not solved for.
     """
-    outcome = solve_each([circuit], [length_s], probes=probes, tolerance=tolerance)[0]
+    hit = _prepare(circuit, length_s, tuple(probes), start)
+    outcome = _solve_batch([hit], tolerance)[0]
     if isinstance(outcome, SolveError):
         raise outcome
     return outcome
@@ -118,9 +127,14 @@ def rest_state(circuit: ResolvedCircuit) -> dict[str, float]:
     return _by_name(program, hit, x[0])
 
 
-def _prepare(circuit: ResolvedCircuit, length_s: float, probes: tuple[str, ...]) -> _Hit:
+def _prepare(
+    circuit: ResolvedCircuit, length_s: float, probes: tuple[str, ...], start: Mapping[str, float] | None = None
+) -> _Hit:
     stamps = stamp_all(circuit)
     topology = topology_of(circuit, stamps)
+    for net in (circuit.output, *probes, *(start or ())):
+        if net not in topology.unknowns:
+            raise ValueError(f"net '{net}' is not solved for; solved for: {', '.join(topology.unknowns)}")
     return _Hit(
         circuit,
         topology,
@@ -128,6 +142,7 @@ def _prepare(circuit: ResolvedCircuit, length_s: float, probes: tuple[str, ...])
         segments_of(list(circuit.inputs.values()), length_s),
         length_s,
         tuple(dict.fromkeys((circuit.output, *probes))),
+        start,
     )
 
 
@@ -147,6 +162,9 @@ def _solve_batch(hits: list[_Hit], tolerance: float) -> list[Solution | SolveErr
     numbers = np.array([program.layout(hit.numbers) for hit in hits])
     x, errors, iterations = _settle(program, hits, numbers)
     outcomes: list[Solution | SolveError] = list(errors)  # type: ignore[arg-type]
+    for i, hit in enumerate(hits):
+        if hit.start is not None and errors[i] is None:
+            x[i] = _started(program, hit, numbers[i], x[i])
     sound = [index for index, error in enumerate(errors) if error is None]
     if not sound:
         return outcomes
@@ -178,6 +196,22 @@ def _settle(
         for i, hit in enumerate(hits)
     ]
     return x, errors, results[:, 1]
+
+
+def _started(
+    program: Program, hit: _Hit, numbers: NDArray[np.float64], x_rest: NDArray[np.float64]
+) -> NDArray[np.float64]:
+    """The state at t = 0 that was asked for in place of the rest state, made consistent."""
+    code = program.code
+    given = hit.start or {}
+    x = np.array([given.get(name, at_rest) for name, at_rest in zip(program.unknowns, x_rest, strict=True)])
+    inputs = np.array([_at_zero(hit.segments, m) for m in range(code.inputs)])
+    moved = rest.project(code, numbers, inputs, x, np.zeros((code.size, code.size)), np.zeros(code.coefficients))
+    if not moved < _CONSISTENT_V:
+        raise SolveError(
+            "no rest state", hit.circuit.name, "No state follows from the start voltages given.", residual=float(moved)
+        )
+    return x
 
 
 def _at_zero(segments: Segments, m: int) -> float:
@@ -234,7 +268,7 @@ def _run(
         segment_v[i, :used], segment_slope[i, :used] = hit.segments.volts, hit.segments.slope
         sines[i] = hit.segments.sines
     place = {name: k for k, name in enumerate(program.unknowns)}
-    probed = [name for name in hits[0].probes if name in place]
+    probed = hits[0].probes
     piece_t, piece_h = np.empty((2, count, room))
     piece_c = np.empty((count, room, len(probed), 5))
     results = np.zeros((count, 5), dtype=np.int64)
@@ -330,7 +364,7 @@ def _finish(
     return Solution(
         circuit=hit.circuit,
         length_s=hit.length_s,
-        nets=tuple(name for name in hit.probes if name in set(program.unknowns)),
+        nets=hit.probes,
         rest=_by_name(program, hit, x_rest),
         counters={
             "steps": steps,

@@ -71,7 +71,7 @@ def test_a_fall_too_short_to_be_told_from_its_corner_still_falls():
     assert np.all(np.isfinite(segments.slope))
     assert volts_at(segments, 0, 0.999) == 1.0
     assert volts_at(segments, 0, 1.5) == 0.0
-    chosen = rc('pulse = { rest = "0V", strike = "1V", length = "4ms", fall = "0.01as" }', "1k", "1u")
+    chosen = rc('pulse = { rest = "0V", strike = "1V", length = "4ms", fall = 1e-20 }', "1k", "1u")
     assert abs(solve(chosen, 0.01).sample(1e3, 1, 9)[0] - (1 - np.exp(-4)) * np.exp(-5)) < 1e-5
 
 
