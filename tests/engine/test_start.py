@@ -34,7 +34,7 @@ def test_nets_without_charge_move_to_where_currents_balance():
         inputs={"in": STILL},
         models={"plain": '{ kind = "diode", saturation_current = "1n" }'},
     )
-    asked = ({}, {"out": 3.0, "below": 3.0}, {"below": -2.0})
+    asked = ({}, {"out": 3.0, "below": 3.0}, {"out": -5.0, "below": -4.8})
     ends = [solve(chosen, 1e-3, start={"top": 5.0, **nets}, tolerance=1e-10).sample(48e3, 48) for nets in asked]
     np.testing.assert_allclose(ends[0], ends[2], rtol=1e-9)
     np.testing.assert_allclose(ends[0], ends[1], rtol=1e-9)
