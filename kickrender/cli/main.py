@@ -79,6 +79,11 @@ def main(arguments: Sequence[str] | None = None) -> int:
     except OSError as error:
         place = error.filename if error.filename is not None else "the operating system"
         return _complain(f"{place}: {error.strerror or error}", FAILED)
+    except Exception as error:  # a fault of ours; whoever mends it wants the traceback
+        if os.environ.get("KICKRENDER_TRACEBACK"):
+            raise
+        what = f"unexpected {type(error).__name__}: {error}"
+        return _complain(f"{what}. This is a fault of kickrender; KICKRENDER_TRACEBACK=1 shows where", FAILED)
 
 
 def _complain(message: str, code: int) -> int:

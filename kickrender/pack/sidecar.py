@@ -9,7 +9,7 @@ from kickrender.errors import WriteError
 from kickrender.pack.batches import Batch
 from kickrender.pack.records import Hit, Plan
 from kickrender.sound.files import write_whole
-from kickrender.sound.render import Sound
+from kickrender.sound.render import Sound, write_pair
 from kickrender.sound.sidecar import check_ours, json_bytes, read_sidecar
 from kickrender.sound.wav import pcm_digest_of_file, write_wav
 
@@ -32,14 +32,12 @@ def write_hit(batch: Batch, hit: Hit, sound: Sound) -> None:
     WriteError
         If the folder cannot be written to or is full, or somebody else's .json is in the way.
     """
-    wav, sidecar = wav_path(batch.folder, hit.name), json_path(batch.folder, hit.name)
+    wav = wav_path(batch.folder, hit.name)
     try:
         wav.parent.mkdir(parents=True, exist_ok=True)
     except OSError as error:
         raise WriteError(f"{wav.parent}: cannot be made: {error.strerror}") from None
-    check_ours(sidecar)
-    write_wav(wav, sound.pcm, sound.rate, batch.options.format)
-    write_whole(sidecar, json_bytes(sidecar_of(batch, hit, sound)))
+    write_pair(wav, sound, sidecar_of(batch, hit, sound))
 
 
 def sidecar_of(batch: Batch, hit: Hit, sound: Sound) -> dict[str, Any]:

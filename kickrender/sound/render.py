@@ -18,7 +18,7 @@ from numpy.typing import NDArray
 
 from kickrender.circuit import Circuit
 from kickrender.engine import Solution, solve_each
-from kickrender.errors import KickrenderError, SolveError
+from kickrender.errors import KickrenderError, SolveError, WriteError
 from kickrender.sound.decimation import decimate, margin_s
 from kickrender.sound.files import write_whole
 from kickrender.sound.finish import TAIL_FLOOR, Pcm, fade, quantise, trim
@@ -81,11 +81,7 @@ class Sound:
         WriteError
             If either cannot be written, or the .json is there and somebody else's. Nothing half-written is left.
         """
-        path = Path(path)
-        sidecar = path.with_suffix(".json")
-        check_ours(sidecar)
-        write_wav(path, self.pcm, self.rate, self.facts["sound"]["format"])
-        write_whole(sidecar, json_bytes(self.facts))
+        write_pair(Path(path), self, self.facts)
 
     def summary(self) -> str:
         """Length, levels and pitch in one line."""
@@ -98,6 +94,23 @@ class Sound:
         if m["decay_s"] is not None:
             pieces.append(f"decay {m['decay_s']:.3f} s")
         return ", ".join(pieces)
+
+
+def write_pair(path: Path, sound: Sound, facts: Mapping[str, Any]) -> None:
+    """Write a sound's WAV file and then its sidecar beside it: both, or neither.
+
+    Raises
+    ------
+    WriteError
+    """
+    sidecar = path.parent / f"{path.name.removesuffix(path.suffix)}.json"
+    check_ours(sidecar)
+    write_wav(path, sound.pcm, sound.rate, sound.facts["sound"]["format"])
+    try:
+        write_whole(sidecar, json_bytes(facts))
+    except WriteError:
+        path.unlink(missing_ok=True)
+        raise
 
 
 def hear_each(

@@ -8,14 +8,7 @@ from kickrender.errors import InputError
 from kickrender.pack.plan import plan_pack
 from kickrender.pack.read import read_pack_text
 from kickrender.pack.records import Plan
-from tests.pack.test_read import PACK, VOICE
-
-
-@pytest.fixture
-def folder(tmp_path: Path) -> Path:
-    (tmp_path / "voice.toml").write_text(VOICE)
-    (tmp_path / "other.toml").write_text(VOICE.replace('"18n"', '"22n"'))
-    return tmp_path
+from tests.pack.texts import PACK
 
 
 def plan_of(text: str, folder: Path) -> Plan:

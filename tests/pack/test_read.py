@@ -6,55 +6,7 @@ import pytest
 
 from kickrender.errors import InputError
 from kickrender.pack.read import read_pack, read_pack_text
-
-VOICE = """
-title = "Plain"
-[inputs.gate]
-pulse = { rest = "0V", strike = "5V", length = "4ms" }
-[inputs.accent]
-constant = "3V"
-[parts]
-R1 = { kind = "resistor", value = "47k", between = ["gate", "out"] }
-R2 = { kind = "resistor", value = "47k", between = ["accent", "out"] }
-C1 = { kind = "capacitor", value = "18n", between = ["out", "ground"] }
-P1 = { kind = "pot", value = "10k", at = 0.2, between = ["out", "ground"] }
-S1 = { kind = "switch", closed = true, between = ["out", "ground"] }
-[controls.tone]
-turns = "P1"
-[controls.accent]
-drives = "accent"
-from = "0V"
-to = "5V"
-start = "3V"
-[output]
-net = "out"
-"""
-
-PACK = """
-title = "Plain pack"
-circuit = "voice.toml"
-[sound]
-rate = "44.1k"
-format = "pcm16"
-[level]
-measure = "momentary"
-target = "-20 LUFS"
-ceiling = "-1 dBTP"
-together = ["accent"]
-[axes]
-tone = [0.1, 0.5]
-accent = { from = "1V", to = "5V", steps = 3 }
-[fixed]
-R1 = "4k7"
-[files]
-name = "{tone}/{accent}"
-"""
-
-
-@pytest.fixture
-def folder(tmp_path: Path) -> Path:
-    (tmp_path / "voice.toml").write_text(VOICE)
-    return tmp_path
+from tests.pack.texts import PACK
 
 
 def faults_of(text: str, folder: Path) -> list[str]:

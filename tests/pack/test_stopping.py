@@ -1,0 +1,122 @@
+"""Runs that end early: stopped by hand, killed, out of room, a worker lost. Whole files only, and a rerun finishes."""
+
+import json
+import os
+import resource
+import signal
+import subprocess
+import sys
+import time
+from collections.abc import Iterator
+from pathlib import Path
+
+import pytest
+
+from kickrender.errors import WorkerError
+from kickrender.pack.batches import Batch, batches_of, groups_of
+from kickrender.pack.plan import plan_pack
+from kickrender.pack.read import read_pack
+from kickrender.pack.render import Outcome, Stop
+from kickrender.pack.workers import run_batches
+from kickrender.sound.wav import pcm_digest_of_file
+from tests.pack.texts import PACK
+
+MANY = PACK.replace("[0.1, 0.5]", "{ from = 0, to = 1, steps = 100 }").replace("{tone}", "{tone:.4f}")
+
+
+@pytest.fixture
+def many(folder: Path) -> Path:
+    (folder / "many.toml").write_text(MANY)
+    return folder / "many.toml"
+
+
+def start(pack: Path, out: Path, *options: str) -> subprocess.Popen[str]:
+    command = [sys.executable, "-m", "kickrender", "pack", str(pack), "--out", str(out), *options]
+    return subprocess.Popen(command, stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True, start_new_session=True)
+
+
+def wait_for_files(out: Path, run: subprocess.Popen[str]) -> None:
+    while run.poll() is None and sum(1 for _ in out.rglob("*.wav")) < 5:
+        time.sleep(0.005)
+
+
+def assert_whole(out: Path) -> None:
+    for path in out.rglob("*.wav"):
+        assert pcm_digest_of_file(path), path
+    for path in out.rglob("*.json"):
+        json.loads(path.read_bytes())
+
+
+def assert_a_rerun_finishes(pack: Path, out: Path) -> None:
+    run = start(pack, out, "--jobs", "1")
+    said, complaint = run.communicate(timeout=120)
+    assert run.returncode == 0, complaint
+    assert f"{out}: 300 hits, " in said
+    assert not list(out.rglob("*.part"))
+    assert len(json.loads((out / "pack.json").read_bytes())["hits"]) == 300
+    assert_whole(out)
+
+
+@pytest.mark.slow
+@pytest.mark.parametrize("jobs", ["1", "2"])
+def test_ctrl_c_leaves_whole_files_and_a_rerun_finishes(jobs: str, many: Path) -> None:
+    out = many.parent / "out"
+    run = start(many, out, "--jobs", jobs)
+    wait_for_files(out, run)
+    os.killpg(run.pid, signal.SIGINT)  # as a terminal does it: to the workers too
+    _, complaint = run.communicate(timeout=60)
+    assert run.returncode == 130
+    assert complaint.splitlines()[-1] == "kickrender: stopped; every file that was written is whole"
+    assert "Traceback" not in complaint
+    assert not (out / "pack.json").exists()
+    assert not list(out.rglob("*.part"))
+    assert 5 <= sum(1 for _ in out.rglob("*.wav")) < 300
+    assert_whole(out)
+    assert_a_rerun_finishes(many, out)
+
+
+@pytest.mark.slow
+@pytest.mark.parametrize("jobs", ["1", "2"])
+def test_after_a_kill_a_rerun_finishes_and_no_worker_stays(jobs: str, many: Path) -> None:
+    out = many.parent / "out"
+    run = start(many, out, "--jobs", jobs)
+    wait_for_files(out, run)
+    run.kill()
+    run.communicate()
+    for _ in range(200):
+        try:
+            os.killpg(run.pid, 0)
+        except ProcessLookupError:
+            break
+        time.sleep(0.05)
+    else:
+        pytest.fail("a worker still runs ten seconds after its parent was killed")
+    assert_a_rerun_finishes(many, out)
+
+
+@pytest.mark.parametrize(("room", "file"), [(500, "1V.wav"), (2000, "1V.json")])
+def test_a_full_disk_is_one_message_and_leaves_nothing_half_written(room: int, file: str, many: Path) -> None:
+    out = many.parent / "out"
+    program = (
+        "import resource, sys; from kickrender.cli.main import main; "
+        f"resource.setrlimit(resource.RLIMIT_FSIZE, ({room}, {room})); sys.exit(main())"
+    )
+    assert resource.getrlimit(resource.RLIMIT_FSIZE)[1] == resource.RLIM_INFINITY
+    command = [sys.executable, "-c", program, "pack", str(many), "--out", str(out), "--jobs", "1"]
+    done = subprocess.run(command, capture_output=True, text=True, timeout=120)
+    assert done.returncode == 1
+    (line,) = [line for line in done.stderr.splitlines() if line.startswith("kickrender:")]
+    assert line.endswith(f"0.0000/{file}: File too large")
+    assert [path for path in out.rglob("*") if path.is_file()] == []
+
+
+def die(batch: Batch, stop: Stop) -> Iterator[Outcome]:
+    os._exit(9)
+    yield Outcome("")
+
+
+def test_a_lost_worker_is_told(many: Path) -> None:
+    plan = plan_pack(read_pack(many))
+    batches = batches_of(plan, many.parent, groups_of(plan.hits), 2, {})
+    with pytest.raises(WorkerError, match=r"a worker process died, perhaps for want of memory.* run again"):
+        list(run_batches(batches, die, 2, lambda hits: None))
