@@ -16,9 +16,9 @@ from kickrender.errors import Fault, InputError, KickrenderError
 @click.command()
 @click.argument("pack")
 @click.option("--out", type=click.Path(path_type=Path), help="The folder to fill; made when missing.")
-@click.option("--jobs", type=click.IntRange(min=1), help="Worker processes.  [default: one per core]")
+@click.option("--jobs", metavar="N", help="Worker processes.  [default: one per core]")
 @click.option("--dry-run", is_flag=True, help="Check everything and name every hit; render nothing.")
-def pack(pack: str, out: Path | None, jobs: int | None, dry_run: bool) -> None:
+def pack(pack: str, out: Path | None, jobs: str | None, dry_run: bool) -> None:
     """Render every hit of PACK: one WAV and one sidecar each, and pack.json and pack.csv over all.
 
     A second run renders only what is missing or changed. No file depends on the number of workers.
@@ -31,6 +31,7 @@ def pack(pack: str, out: Path | None, jobs: int | None, dry_run: bool) -> None:
     """
     if out is None and not dry_run:
         raise InputError(Fault("kickrender pack", "--out is missing", "--out FOLDER, or --dry-run"))
+    workers = cores() if jobs is None else read_jobs(jobs)
     from kickrender.pack.plan import plan_pack
     from kickrender.pack.read import read_pack
 
@@ -46,7 +47,7 @@ def pack(pack: str, out: Path | None, jobs: int | None, dry_run: bool) -> None:
     with click.progressbar(
         length=len(plan.hits), label=plan.title, file=sys.stderr, hidden=not sys.stderr.isatty()
     ) as bar:
-        result = render_plan(plan, out, jobs or cores(), bar.update)
+        result = render_plan(plan, out, workers, bar.update)
     if result.kept:
         note(f"{len(result.kept)} hits were there already")
     for name in result.stale:
@@ -58,6 +59,13 @@ def pack(pack: str, out: Path | None, jobs: int | None, dry_run: bool) -> None:
 
 class HitsFailed(KickrenderError):
     """Some hits have no file; the message says which and why."""
+
+
+def read_jobs(text: str) -> int:
+    """A number of worker processes; raises InputError."""
+    if not text.isascii() or not text.isdigit() or int(text) == 0:
+        raise InputError(Fault("--jobs", f"found '{text}'", "a whole number, 1 or more"))
+    return int(text)
 
 
 def cores() -> int:

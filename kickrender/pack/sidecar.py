@@ -8,10 +8,9 @@ from typing import Any
 from kickrender.errors import WriteError
 from kickrender.pack.batches import Batch
 from kickrender.pack.records import Hit, Plan
-from kickrender.sound.files import write_whole
 from kickrender.sound.render import Sound, write_pair
-from kickrender.sound.sidecar import check_ours, json_bytes, read_sidecar
-from kickrender.sound.wav import pcm_digest_of_file, write_wav
+from kickrender.sound.sidecar import read_sidecar
+from kickrender.sound.wav import pcm_digest_of_file
 
 
 def wav_path(folder: Path, name: str) -> Path:
