@@ -176,4 +176,4 @@ def _maybe(value: float | None, digits: int) -> float | None:
 def _easy_length(count: int) -> int:
     """An even length, not much longer, whose transform is quick: a power of two, or 5/8 or 3/4 of one."""
     power = max(16, 1 << (count - 1).bit_length())
-    return min((length for length in (power * 5 // 8, power * 3 // 4, power) if length >= count))
+    return min(length for length in (power * 5 // 8, power * 3 // 4, power) if length >= count)

@@ -151,8 +151,6 @@ def _settled(smooth: Floats, rate: float, first: float, last: float, guess_hz: f
         for _ in range(SETTLING_ROUNDS):
             weights = np.sqrt(level) / (1 + ((hz / settled - 1) / SETTLED_SPREAD) ** 2) ** 2
             settled = float((weights * hz).sum() / weights.sum())
-        if not guess_hz / 2 < settled < guess_hz * 2:  # noise: no fundamental to follow
-            return guess_hz
         fall = -np.log(np.abs(after / before)) / hop
         decay = min(max(float((weights * fall).sum() / weights.sum()), 0.0), 3 / length)
     return settled

@@ -84,7 +84,7 @@ def test_a_sine_reads_its_amplitude_at_any_phase(share):
 
 @pytest.mark.parametrize("seed", range(8))
 def test_noise_reads_as_resampled_by_scipy(seed):
-    """scipy.signal.resample (exact, by Fourier transform) to 32 times the rate; noise to 0.4 of the rate; within 0.02 dB."""
+    """scipy.signal.resample (a Fourier transform) to 32 times the rate, noise to 0.4 of the rate; within 0.02 dB."""
     noise = np.random.default_rng(seed).standard_normal(3000) * np.exp(-np.arange(3000) / 700)
     limited = signal.sosfiltfilt(signal.ellip(10, 0.1, 100, 0.80, output="sos"), noise)
     padded = np.pad(limited, 500)

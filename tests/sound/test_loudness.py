@@ -21,9 +21,12 @@ def test_silence_has_no_loudness():
 
 
 def test_below_the_gate_only_momentary_remains():
-    found = loudness(burst(1, 1e-4), RATE_HZ)
-    assert found.integrated_lufs is None
-    assert -100 < found.momentary_lufs < -70
+    """The absolute gate lies at -70 LUFS."""
+    full = loudness(burst(1), RATE_HZ).integrated_lufs
+    for wanted in (-71, -69):
+        found = loudness(burst(1, 10 ** ((wanted - full) / 20)), RATE_HZ)
+        assert found.momentary_lufs == pytest.approx(wanted, abs=0.1)
+        assert found.integrated_lufs == (None if wanted < -70 else pytest.approx(wanted, abs=1e-6))
 
 
 @pytest.mark.parametrize("seconds", [0.001, 0.05, 0.3])

@@ -131,6 +131,9 @@ def test_files_that_are_not_whole_have_no_digest(tmp_path):
         assert pcm_digest_of_file(path) is None
     path.write_bytes(content + b"\0")
     assert pcm_digest_of_file(path) is None
+    # A whole RIFF file, by its own account, whose samples are not all there.
+    path.write_bytes(b"RIFF" + struct.pack("<I", 14) + b"WAVEdata" + struct.pack("<I", 4) + b"ab")
+    assert pcm_digest_of_file(path) is None
     assert pcm_digest_of_file(tmp_path) is None
 
 
