@@ -59,7 +59,7 @@ def test_a_second_strike_puts_the_end_off():
 
 
 def test_a_tail_that_no_longer_crosses_zero_is_followed():
-    """Six half cycles, then a slow exponential, as a coupling capacitor leaves: it alone says when the sound is dead."""
+    """Six half cycles, then a slow exponential, as a coupling capacitor leaves: it alone says when the sound dies."""
     t = times(1)
     sound = np.exp(-t / 0.015) * np.sin(2 * np.pi * 50 * t) + 0.02 * (np.exp(-t / 0.1) - np.exp(-t / 0.001))
     peak, peak_s = np.abs(sound).max(), t[np.argmax(np.abs(sound))]
