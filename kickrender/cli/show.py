@@ -10,6 +10,8 @@ from kickrender.cli.settings import json_option, print_json, read_settings, set_
 from kickrender.cli.solver import ready_solver
 from kickrender.cli.tables import print_table
 
+REST_DIGITS = 9  # below a nanovolt a rest level is the rounding of the solver
+
 
 @click.command()
 @click.argument("circuit")
@@ -62,7 +64,7 @@ def _print_facts(facts: dict[str, Any]) -> None:
     print_table(
         "At rest",
         ("net", "level"),
-        [(name, _text(entry["value"], entry["unit"])) for name, entry in facts["rest"].items()],
+        [(name, _text(round(entry["value"], REST_DIGITS), entry["unit"])) for name, entry in facts["rest"].items()],
     )
     print_table(
         "Poles, linearised at rest",
