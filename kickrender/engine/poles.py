@@ -5,7 +5,6 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from scipy import linalg
 
 from kickrender.circuit.records import ResolvedCircuit
 from kickrender.engine.equations import matrix_at
@@ -46,6 +45,8 @@ def poles(circuit: ResolvedCircuit) -> list[Pole]:
     SolveError
         If no rest state is found.
     """
+    from scipy import linalg  # slow to import, and rendering does not need it
+
     matrix, rates, _ = linearised(circuit)
     # infinite eigenvalues belong to unknowns without a time constant; scaling by the largest rate keeps them apart
     values, weights = linalg.eig(matrix, rates, right=False, homogeneous_eigvals=True)
