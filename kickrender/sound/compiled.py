@@ -1,6 +1,8 @@
 """Compiled loops of the measurements: one pass over the samples each.
 
-They add and multiply in a fixed order, so that a gain set from them is the same on every machine.
+They add and multiply in a fixed order, so that a gain set from them is the same on every machine. Most would be one
+line of numpy; but each such line makes arrays as long as the sound, and handing out that memory took longer than
+measuring it.
 """
 
 from __future__ import annotations
@@ -41,6 +43,54 @@ def running_energy(samples: Floats, sections: Floats, energy: Floats) -> None:
         s = d2 * y - c2 * z
         total += z * z
         energy[k + 1] = total
+
+
+@kernel
+def largest_rise(energy: Floats, window: int) -> float:
+    """The largest of energy[k + window] - energy[k], k = 0 to n - window - 1, of an array of shape (n,), n > window."""
+    largest = 0.0
+    for k in range(len(energy) - window):
+        largest = max(largest, energy[k + window] - energy[k])
+    return largest
+
+
+@kernel
+def largest_magnitude(samples: Floats) -> tuple[int, float]:
+    """Where the largest magnitude is, and what it is; the first one of several. Shape (n,), n >= 1."""
+    place, largest = 0, abs(samples[0])
+    for k in range(1, len(samples)):
+        if abs(samples[k]) > largest:
+            place, largest = k, abs(samples[k])
+    return place, largest
+
+
+@kernel
+def first_reaching(samples: Floats, level: float) -> int:
+    """The first sample whose magnitude is at least `level`; n when there is none. Shape (n,)."""
+    for k in range(len(samples)):
+        if abs(samples[k]) >= level:
+            return k
+    return len(samples)
+
+
+@kernel
+def last_reaching(samples: Floats, level: float) -> int:
+    """The last sample whose magnitude is at least `level`; -1 when there is none. Shape (n,)."""
+    for k in range(len(samples) - 1, -1, -1):
+        if abs(samples[k]) >= level:
+            return k
+    return -1
+
+
+@kernel
+def mean_bin(spectrum: Floats) -> float:
+    """Mean index of the bins of a spectrum weighted by their power; shape (2 n,), real and imaginary parts in turn."""
+    power = moment = 0.0
+    for k in range(len(spectrum) // 2):
+        here = spectrum[2 * k] * spectrum[2 * k] + spectrum[2 * k + 1] * spectrum[2 * k + 1]
+        power += here
+        moment += k * here
+    return moment / power
 
 
 @kernel

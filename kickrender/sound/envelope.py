@@ -19,17 +19,18 @@ def attack_s(samples: Floats, rate_hz: float) -> float:
 
     `samples`: shape (n_samples,), not silent. Source: common practice (rise time), no source.
     """
-    magnitude = np.abs(samples)
-    peak = float(magnitude.max())
-    return (_first_reach(magnitude, ATTACK_TO * peak) - _first_reach(magnitude, ATTACK_FROM * peak)) / rate_hz
+    from kickrender.sound.compiled import first_reaching, largest_magnitude  # loads the compiler
 
+    def reached(level: float) -> float:
+        """Where, in samples, a straight line between magnitudes first reaches a level; 0 when the first one does."""
+        k = first_reaching(samples, level)
+        if k == 0:
+            return 0.0
+        before, here = abs(float(samples[k - 1])), abs(float(samples[k]))
+        return k - (here - level) / (here - before)
 
-def _first_reach(magnitude: Floats, level: float) -> float:
-    """Where, in samples, a straight line between samples first reaches a level; 0 when the first sample does."""
-    k = int(np.argmax(magnitude >= level))
-    if k == 0:
-        return 0.0
-    return k - float((magnitude[k] - level) / (magnitude[k] - magnitude[k - 1]))
+    peak = largest_magnitude(samples)[1]
+    return (reached(ATTACK_TO * peak) - reached(ATTACK_FROM * peak)) / rate_hz
 
 
 def decay_s(samples: Floats, rate_hz: float, drop_db: float = DECAY_DB) -> float | None:
@@ -50,14 +51,13 @@ def decay_s(samples: Floats, rate_hz: float, drop_db: float = DECAY_DB) -> float
 
     Source: common practice, no source.
     """
-    from kickrender.sound.compiled import half_cycles  # loads the compiler
+    from kickrender.sound.compiled import half_cycles, largest_magnitude, last_reaching  # loads the compiler
 
     crossings, peaks, places = (np.empty(len(samples)) for _ in range(3))
     count = half_cycles(samples, LEAST_SWING, crossings, peaks, places) - 1  # the last one is cut off
-    magnitude = np.abs(samples)
-    top = int(np.argmax(magnitude))
-    level = float(magnitude[top]) * 10 ** (-drop_db / 20)
-    last = int(np.flatnonzero(magnitude >= level)[-1])
+    top, peak = largest_magnitude(samples)
+    level = peak * 10 ** (-drop_db / 20)
+    last = last_reaching(samples, level)
     if count >= 3:
         peaks, places = peaks[:count], places[:count]
         # A lopsided wave swings farther to one side: its neighbours say where it would be on the other.
@@ -71,5 +71,6 @@ def decay_s(samples: Floats, rate_hz: float, drop_db: float = DECAY_DB) -> float
             return None  # below the level for less than a period: it may only be crossing zero
     if last == len(samples) - 1:
         return None
-    share = math.log(magnitude[last] / level) / math.log(magnitude[last] / max(magnitude[last + 1], 1e-300))
+    here, after = abs(float(samples[last])), abs(float(samples[last + 1]))
+    share = math.log(here / level) / math.log(here / max(after, 1e-300))
     return (last + share - top) / rate_hz

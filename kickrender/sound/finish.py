@@ -87,7 +87,8 @@ def quantise(samples: Floats, file_format: str, seed: int | None = None) -> Pcm:
         return samples.astype(np.float32)
     if largest > LARGEST:
         over = f"the sound reaches {largest:.4g} times full scale ({20 * math.log10(largest):+.2f} dB)"
-        raise InputError(Fault(file_format, over, "at most 1; lower the level, raise full_scale, or write float32"))
+        remedy = "at most 1; lower the level, set a ceiling, raise full_scale, or write float32"
+        raise InputError(Fault(file_format, over, remedy))
     steps = 2 ** (BITS[file_format] - 1)
     scaled = samples * float(steps)
     if file_format == "pcm16" and seed is not None:

@@ -59,13 +59,13 @@ def loudness(samples: Floats, rate_hz: float) -> Loudness:
     Source: ITU-R BS.1770-5 (11/2023) Annex 1; EBU Tech 3341 V4 (11/2023) section 2.2. The silence around short
     sounds is common practice, no source.
     """
-    from kickrender.sound.compiled import running_energy  # loads the compiler
+    from kickrender.sound.compiled import largest_rise, running_energy  # loads the compiler
 
     window = round(WINDOW_S * rate_hz)
     energy = np.empty(len(samples) + round(RING_OUT_S * rate_hz) + 1)
     running_energy(samples, k_weighting(rate_hz), energy)
     # Windows that reach into the silence hold no more than the nearest one that does not, unless all of them do.
-    loudest = (energy[window:] - energy[:-window]).max() if len(energy) > window else energy[-1]
+    loudest = largest_rise(energy, window) if len(energy) > window else energy[-1]
     return Loudness(
         _lufs(float(loudest) / (WINDOW_S * rate_hz)),
         _integrated(energy, len(samples), window, rate_hz),

@@ -63,7 +63,7 @@ def pitch(samples: Floats, rate_hz: float) -> Pitch:
 
     Source: common practice, no source.
     """
-    from kickrender.sound.compiled import half_cycles  # loads the compiler
+    from kickrender.sound.compiled import first_reaching, half_cycles  # loads the compiler
 
     factor = max(1, round(rate_hz / ANALYSIS_RATE_HZ))
     smooth = _smoothed(samples, factor, rate_hz)
@@ -80,7 +80,7 @@ def pitch(samples: Floats, rate_hz: float) -> Pitch:
         return Pitch(np.empty(0), np.empty(0), None, None)
     hz = _readings(lengths)
     times = (crossings[1:end] + crossings[2 : end + 1]) / 2 / rate + delay_s
-    onset = int(np.argmax(np.abs(smooth) >= ONSET * peaks.max()))
+    onset = first_reaching(smooth, ONSET * peaks.max())
     early = crossings[1:end] <= onset + START_WITHIN_S * rate
     start = float(hz[early].max()) if early.any() else float(hz[0])
     settled = _settled(smooth[::2].copy(), rate / 2, crossings[1] / 2, crossings[end] / 2, float(np.median(hz[-4:])))

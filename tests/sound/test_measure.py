@@ -9,6 +9,7 @@ import numpy as np
 import pytest
 
 from kickrender.errors import MeasurementError
+from kickrender.sound import compiled
 from kickrender.sound.measure import Measurements, centroid_hz, measure, nearest_note, offset, pitch_track, significant
 
 RATE_HZ = 48_000
@@ -164,3 +165,19 @@ def test_offset_does_not_hear_what_still_rings():
     t = np.arange(RATE_HZ) / RATE_HZ
     assert offset(0.25 + np.sin(2 * np.pi * 50 * t + 0.7), RATE_HZ) == pytest.approx(0.25, abs=1e-6)
     assert offset(np.array([0.5, 0.5]), RATE_HZ) == 0.5
+
+
+def test_kernels_equal_numpy():
+    random = np.random.default_rng(8)
+    samples = random.standard_normal(500)
+    magnitude = np.abs(samples)
+    assert compiled.largest_magnitude(samples) == (int(magnitude.argmax()), magnitude.max())
+    assert compiled.largest_magnitude(np.array([-1.0, 1.0])) == (0, 1.0)
+    assert compiled.first_reaching(samples, 2.0) == int(np.argmax(magnitude >= 2.0))
+    assert compiled.last_reaching(samples, 2.0) == int(np.flatnonzero(magnitude >= 2.0)[-1])
+    assert (compiled.first_reaching(samples, 9.0), compiled.last_reaching(samples, 9.0)) == (500, -1)
+    energy = np.cumsum(samples**2)
+    for window in (1, 77, 499):
+        assert compiled.largest_rise(energy, window) == (energy[window:] - energy[:-window]).max()
+    power = samples[0::2] ** 2 + samples[1::2] ** 2
+    assert compiled.mean_bin(samples) == pytest.approx((power * np.arange(250)).sum() / power.sum())
