@@ -5,6 +5,7 @@ then kept on disk.
 """
 
 from kickrender.engine.compile import is_compiled
+from kickrender.engine.linearise import response
 from kickrender.engine.poles import Pole, poles
 from kickrender.engine.solution import Solution
 from kickrender.engine.solve import DEFAULT_TOLERANCE, ENGINE_VERSION, rest_state, solve, solve_each
@@ -17,6 +18,7 @@ __all__ = [
     "Solution",
     "is_compiled",
     "poles",
+    "response",
     "rest_state",
     "solve",
     "solve_each",

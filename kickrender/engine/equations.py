@@ -202,7 +202,7 @@ def back_substitute(code, coefficients, per_pivot, vectors, solution, start, wid
 
 @kernel
 def matrix_at(code, numbers, coefficients, vectors, time_s, segment_t, segment_v, segment_slope, sines):
-    """Assemble W of one hit at the voltages in `vectors`; section w of `coefficients` is changed in place."""
+    """Assemble W of one hit at the voltages in `vectors`, into section w of `coefficients`; returns the slopes."""
     arguments = np.zeros(code.exponentials + len(FLAT))
     exp_slopes = np.zeros(code.exponentials + len(FLAT))
     exp_values = np.zeros(code.exponentials + len(FLAT))
@@ -213,3 +213,4 @@ def matrix_at(code, numbers, coefficients, vectors, time_s, segment_t, segment_v
     set_inputs(code, time, segment_t, segment_v, segment_slope, sines, vectors, second, LONE)
     evaluate_devices(code, numbers, vectors, arguments, exp_slopes, exp_values, tanhs, slopes, True, LONE)
     assemble(code, coefficients, slopes, LONE)
+    return slopes

@@ -1,20 +1,17 @@
-"""Natural frequencies of the circuit linearised at its rest state."""
+"""Natural frequencies of the circuit linearised about a state."""
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
 
 import numpy as np
 
 from kickrender.circuit.records import ResolvedCircuit
-from kickrender.engine.equations import matrix_at
-from kickrender.engine.lanes import FLAT, PADDING
-from kickrender.engine.plan import Plan
-from kickrender.engine.program import build_program
-from kickrender.engine.solve import rest_state
-from kickrender.engine.topology import Topology, numbers_of, stamp_all, topology_of
+from kickrender.engine.linearise import linearised
 
 _RINGS_ABOVE_Q = 0.5
+_ROUNDING = 1e-14
 
 
 @dataclass(frozen=True)
@@ -35,8 +32,8 @@ class Pole:
         return abs(self.q) > _RINGS_ABOVE_Q * (1.0 + 1e-9)
 
 
-def poles(circuit: ResolvedCircuit) -> list[Pole]:
-    """Poles of the circuit linearised at its rest state, lowest frequency first.
+def poles(circuit: ResolvedCircuit, state: Mapping[str, float] | None = None) -> list[Pole]:
+    """Poles of the circuit linearised about `state` (its rest state by default), lowest frequency first.
 
     Finite eigenvalues s of det(s C + G + device slopes) = 0; those of pole pairs are given once.
 
@@ -47,10 +44,14 @@ def poles(circuit: ResolvedCircuit) -> list[Pole]:
     """
     from scipy import linalg  # slow to import, and rendering does not need it
 
-    matrix, rates, _ = linearised(circuit)
-    # infinite eigenvalues belong to unknowns without a time constant; scaling by the largest rate keeps them apart
+    linear = linearised(circuit, state)
+    # rows differ by 1e12 (current laws beside an op-amp's rate), and the algorithm's rounding is that of the largest
+    scale = np.abs(matrix).max(axis=1, keepdims=True)
+    scale[scale == 0.0] = 1.0
+    matrix, rates = matrix / scale, rates / scale
     values, weights = linalg.eig(matrix, rates, right=False, homogeneous_eigvals=True)
-    finite = np.abs(weights) > 1e-13 * np.abs(values)
+    # infinite eigenvalues belong to unknowns without a time constant: their weights are rounding
+    finite = np.abs(weights) * np.abs(matrix).max() > _ROUNDING * np.abs(rates).max() * np.abs(values)
     found = []
     for s in -(values[finite] / weights[finite]):
         size = abs(s)
@@ -65,37 +66,3 @@ def poles(circuit: ResolvedCircuit) -> list[Pole]:
         decay_s = np.log(1000.0) / -s.real if s.real != 0.0 else np.inf
         found.append(Pole(float(size / (2.0 * np.pi)), float(quality), float(decay_s)))
     return sorted(found, key=lambda pole: pole.frequency_hz)
-
-
-def linearised(circuit: ResolvedCircuit) -> tuple[np.ndarray, np.ndarray, Topology]:
-    """Minus the Jacobian of f and C, shape (n, n) each, at the rest state, in the topology's rows and columns."""
-    state = rest_state(circuit)
-    stamps = stamp_all(circuit)
-    topology = topology_of(circuit, stamps)
-    order = tuple(range(topology.size))
-    program = build_program(topology, Plan(order, order))
-    code, layout = program.code, program.layout(numbers_of(circuit, topology, stamps))
-    coefficients, vectors = np.zeros(code.coefficients), np.zeros(code.vectors + len(FLAT))
-    coefficients[: code.g] = layout[: code.g]
-    vectors[: code.size] = [state[name] for name in topology.unknowns]
-    vectors[code.stride + code.inputs :][: code.known - code.inputs] = layout[code.n_held :]
-    volts = np.array([state[name] for name in topology.inputs])
-    matrix_at(
-        code,
-        np.append(layout, np.zeros(PADDING)),
-        coefficients,
-        vectors,
-        0.0,
-        np.zeros(1),
-        volts,
-        np.zeros(code.inputs),
-        np.zeros(3 * code.inputs),
-    )
-    matrix, rates = np.zeros((2, topology.size, topology.size))
-    first = code.first_w
-    for entry, (row, column) in enumerate(program.pattern):
-        matrix[row, column] = coefficients[first + entry]
-    for index, entry in enumerate(program.c_of_entry):
-        row, column = topology.entries_c[entry]
-        rates[row, column] += layout[code.n_c + index]
-    return matrix, rates, topology
