@@ -194,6 +194,45 @@ _OPAMP_MODEL: Mapping[str, Quantity] = {
     "headroom_low": Quantity("V", "lowest output less lower rail", at_least=0.0),
     "dc_gain": Quantity("", "gain at rest", default=2e5, above=0.0),
 }
+_JFET_MODEL: Mapping[str, Quantity] = {
+    "drain_current": Quantity("A", "saturated drain current with gate and source joined", above=0.0),
+    "pinch_off": Quantity("V", "reverse gate voltage that closes the channel, without sign", above=0.0),
+    "saturation_current": Quantity("A", "saturation current of each gate junction at 25 C", above=0.0),
+    "ideality": Quantity("", "ideality factor of both junctions", default=1.0, above=0.0),
+    "early_voltage": Quantity("V", "Early voltage of the channel; off when not given", optional=True, above=0.0),
+    "gate_source_capacitance": Quantity("F", "constant gate-source capacitance", default=0.0, at_least=0.0),
+    "gate_drain_capacitance": Quantity("F", "constant gate-drain capacitance", default=0.0, at_least=0.0),
+    "band_gap": _BAND_GAP,
+}
+_ZENER_MODEL: Mapping[str, Quantity] = {
+    **_DIODE_MODEL,
+    "breakdown_voltage": Quantity("V", "reverse voltage at the breakdown current", above=0.0),
+    "breakdown_current": Quantity("A", "reverse current at the breakdown voltage", above=0.0),
+    "breakdown_ideality": Quantity(
+        "", "ideality factor of the breakdown: how soft its knee is", default=1.0, above=0.0
+    ),
+}
+_OTA_MODEL: Mapping[str, Quantity] = {
+    "saturation_current": Quantity("A", "saturation current of the bias junction at 25 C", above=0.0),
+    "ideality": Quantity("", "ideality factor of the bias junction", default=1.0, above=0.0),
+    "headroom_high": Quantity("V", "upper rail less highest output", at_least=0.0),
+    "headroom_low": Quantity("V", "lowest output less lower rail", at_least=0.0),
+    "band_gap": _BAND_GAP,
+}
+
+
+def _jfet(about: str) -> Kind:
+    return Kind(
+        about=about,
+        wirings=(_each("drain", "gate", "source"),),
+        model=_JFET_MODEL,
+        # A closed channel leaves the smallest conductance of both junctions, which also joins drain and source.
+        conducts=(("drain", "source"), ("gate", "source"), ("gate", "drain")),
+    )
+
+
+def _windings(part: Part) -> dict[str, float]:
+    return {key: part.values[key] for key in ("primary_inductance", "secondary_inductance", "coupling")}
 
 
 def _transistor(about: str) -> Kind:
@@ -272,6 +311,56 @@ KINDS: Mapping[str, Kind] = MappingProxyType(
             drives=("out",),
             senses=("plus", "minus", "rail_high", "rail_low"),
             ordered=(("rail_high", "rail_low"),),
+        ),
+        "n-jfet": _jfet("n-channel junction field-effect transistor"),
+        "p-jfet": _jfet("p-channel junction field-effect transistor"),
+        "zener": Kind(
+            about="zener diode",
+            wirings=(_each("anode", "cathode"),),
+            model=_ZENER_MODEL,
+            conducts=(("anode", "cathode"),),
+        ),
+        "ota": Kind(
+            about="transconductance amplifier",
+            wirings=({**_each("plus", "minus", "bias", "out"), "rails": ("rail_high", "rail_low")},),
+            model=_OTA_MODEL,
+            # The output is a current: a net it feeds needs a way to ground of its own.
+            conducts=(("bias", "rail_low"),),
+            senses=("plus", "minus", "rail_high"),
+            ordered=(("rail_high", "rail_low"),),
+        ),
+        "transformer": Kind(
+            about="two coupled windings",
+            wirings=({"primary": ("primary_a", "primary_b"), "secondary": ("secondary_a", "secondary_b")},),
+            fields={
+                "primary_inductance": Quantity("H", "inductance of the primary alone", above=0.0),
+                "secondary_inductance": Quantity("H", "inductance of the secondary alone", above=0.0),
+                "coupling": Quantity("", "coupling factor", default=1.0, above=0.0, at_most=1.0),
+            },
+            setting="coupling",
+            electrical=_windings,
+            units={"primary_inductance": "H", "secondary_inductance": "H", "coupling": ""},
+            conducts=(("primary_a", "primary_b"), ("secondary_a", "secondary_b")),
+            coils=(("primary_a", "primary_b"), ("secondary_a", "secondary_b")),
+        ),
+        "controlled-voltage": Kind(
+            about="voltage-controlled voltage source from ground",
+            wirings=(_each("plus", "minus", "out"),),
+            fields={"value": Quantity("", "voltage gain")},
+            setting="value",
+            electrical=lambda part: {"gain": part.values["value"]},
+            units={"gain": ""},
+            drives=("out",),
+            senses=("plus", "minus"),
+        ),
+        "controlled-current": Kind(
+            about="voltage-controlled current source",
+            wirings=({**_each("plus", "minus"), **_BETWEEN},),
+            fields={"value": Quantity("S", "transconductance")},
+            setting="value",
+            electrical=lambda part: {"transconductance": part.values["value"]},
+            units={"transconductance": "S"},
+            senses=("plus", "minus"),
         ),
     }
 )

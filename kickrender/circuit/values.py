@@ -70,6 +70,7 @@ UNITS: Mapping[str, Unit] = MappingProxyType(
         "H": Unit({"H": 0}, "'10m', '10 mH', '4m7'", "pnum", {"n": -9, **_MICRO, "m": -3, "H": 0}, silent=True),
         "V": Unit({"V": 0}, "'5V', '100 mV'", "pnumk"),
         "A": Unit({"A": 0}, "'2.5n', '10 fA'", "fpnum"),
+        "S": Unit({"S": 0}, "'1mS', '100 uS'", "pnum"),
         "s": Unit({"s": 0}, "'4ms', '2 us'", "pnum"),
         "Hz": Unit({"Hz": 0}, "'100Hz', '3 MHz'", "mkMG"),
         "V/s": Unit({"V/s": 0, "V/us": 6, "V/\u00b5s": 6, "V/\u03bcs": 6}, "'13 V/us', '500k'", "mkMG"),

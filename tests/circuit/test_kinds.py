@@ -77,6 +77,39 @@ def resolved(part: str) -> ResolvedPart:
             {},
             {"plus": "a", "minus": "b", "out": "w", "rail_high": "a", "rail_low": "ground"},
         ),
+        (
+            'kind = "n-jfet", model = "small-n-jfet", drain = "a", gate = "b", source = "w"',
+            {},
+            {"drain": "a", "gate": "b", "source": "w"},
+        ),
+        (
+            'kind = "p-jfet", model = "small-p-jfet", drain = "a", gate = "b", source = "w"',
+            {},
+            {"drain": "a", "gate": "b", "source": "w"},
+        ),
+        ('kind = "zener", model = "small-zener", anode = "w", cathode = "a"', {}, {"anode": "w", "cathode": "a"}),
+        (
+            'kind = "ota", model = "transconductor", plus = "a", minus = "b", bias = "w", out = "b", '
+            'rails = ["a", "ground"]',
+            {},
+            {"plus": "a", "minus": "b", "bias": "w", "out": "b", "rail_high": "a", "rail_low": "ground"},
+        ),
+        (
+            'kind = "transformer", primary_inductance = 1, secondary_inductance = "10m", '
+            'primary = ["w", "b"], secondary = ["b", "ground"]',
+            {"primary_inductance": 1.0, "secondary_inductance": 0.01, "coupling": 1.0},
+            {"primary_a": "w", "primary_b": "b", "secondary_a": "b", "secondary_b": "ground"},
+        ),
+        (
+            'kind = "controlled-current", value = "1mS", plus = "a", minus = "b", between = ["ground", "w"]',
+            {"transconductance": 1e-3},
+            {"plus": "a", "minus": "b", "a": "ground", "b": "w"},
+        ),
+        (
+            'kind = "controlled-voltage", value = -3, plus = "a", minus = "ground", out = "w"',
+            {"gain": -3.0},
+            {"plus": "a", "minus": "ground", "out": "w"},
+        ),
     ],
 )
 def test_electrical_values(part: str, values: dict[str, float], terminals: dict[str, str]) -> None:

@@ -7,7 +7,7 @@ memory; `evaluate` calls them in that order.
 from __future__ import annotations
 
 from kickrender.engine.compile import kernel
-from kickrender.engine.laws import diode, linear, opamp, transistor
+from kickrender.engine.laws import controlled, diode, jfet, linear, opamp, ota, transistor, windings, zener
 
 STAMPS = {
     "resistor": linear.stamp_resistance,
@@ -19,9 +19,16 @@ STAMPS = {
     "npn": transistor.stamp,
     "pnp": transistor.stamp,
     "opamp": opamp.stamp,
+    "n-jfet": jfet.stamp,
+    "p-jfet": jfet.stamp,
+    "zener": zener.stamp,
+    "ota": ota.stamp,
+    "transformer": windings.stamp,
+    "controlled-voltage": controlled.stamp_voltage,
+    "controlled-current": controlled.stamp_current,
 }
 
-LAWS = ("diode", "transistor", "opamp")
+LAWS = ("diode", "transistor", "opamp", "jfet", "zener", "ota")
 
 
 @kernel
@@ -32,3 +39,6 @@ def evaluate(spans, numbers, arguments, exp_slopes, exp_values, tanhs, vectors, 
         spans[1], numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, with_slopes, width
     )
     opamp.evaluate(spans[2], numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, with_slopes, width)
+    jfet.evaluate(spans[3], numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, with_slopes, width)
+    zener.evaluate(spans[4], numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, with_slopes, width)
+    ota.evaluate(spans[5], numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, with_slopes, width)
