@@ -18,7 +18,7 @@ from kickrender.pack.workers import Progress, run_batches
 from kickrender.sound.files import sweep_unfinished
 from kickrender.sound.level import Gain
 
-FEWEST_PER_WORKER = 8  # starting a worker costs about as much as rendering this many hits
+FEWEST_PER_WORKER = 32  # loading the solver takes a worker about as long as rendering this many hits
 
 
 @dataclass(frozen=True)
