@@ -1,4 +1,8 @@
-"""Files that are whole or not there: written beside, flushed to the disk, then renamed."""
+"""Files that are whole or not there: written beside, handed to the system, then renamed.
+
+That holds when the program is killed at any moment. The disk is not waited for, which would cost more than rendering:
+after a power failure a file may be short, and a pack's next run notices by its digest and renders it again.
+"""
 
 from __future__ import annotations
 
@@ -14,7 +18,7 @@ _BESIDE = re.compile(r"\.kick-[0-9a-f]{16}\.part")
 
 
 def write_whole(path: Path, *pieces: bytes) -> None:
-    """Write the pieces as one file, replacing what was there only once all of it is on the disk.
+    """Write the pieces as one file, replacing what was there only once all of it is written.
 
     Raises
     ------
@@ -27,8 +31,6 @@ def write_whole(path: Path, *pieces: bytes) -> None:
         with beside.open("xb") as file:
             for piece in pieces:
                 file.write(piece)
-            file.flush()
-            os.fsync(file.fileno())
         os.replace(beside, path)
     except OSError as error:
         raise WriteError(f"{path}: {error.strerror or error}") from None
