@@ -46,9 +46,9 @@ def poles(circuit: ResolvedCircuit, state: Mapping[str, float] | None = None) ->
 
     linear = linearised(circuit, state)
     # rows differ by 1e12 (current laws beside an op-amp's rate), and the algorithm's rounding is that of the largest
-    scale = np.abs(matrix).max(axis=1, keepdims=True)
+    scale = np.abs(linear.matrix).max(axis=1, keepdims=True)
     scale[scale == 0.0] = 1.0
-    matrix, rates = matrix / scale, rates / scale
+    matrix, rates = linear.matrix / scale, linear.rates / scale
     values, weights = linalg.eig(matrix, rates, right=False, homogeneous_eigvals=True)
     # infinite eigenvalues belong to unknowns without a time constant: their weights are rounding
     finite = np.abs(weights) * np.abs(matrix).max() > _ROUNDING * np.abs(rates).max() * np.abs(values)
