@@ -25,6 +25,7 @@ MEASURES: Mapping[str, tuple[str | None, str]] = {
 }
 _MEASURE_OF_UNIT = {"LUFS": "momentary", "dBTP": "true-peak", "dBFS": "peak"}
 LOWEST_DB, HIGHEST_DB = -70.0, 0.0
+USUAL_CEILING_DBTP = 0.0  # a target alone must not push a sound beyond what a file can hold
 GAIN_STEPS_PER_DB = 1000
 
 
@@ -118,8 +119,8 @@ def read_level(given: Mapping[str, Any], place: Callable[[str], str]) -> Level:
     Parameters
     ----------
     given : mapping
-        A target is a number, or a text with the measure's unit ("-14 LUFS"); a ceiling likewise ("-1 dBTP").
-        None means not given.
+        A target is a number, or a text with the measure's unit ("-14 LUFS"); a ceiling likewise ("-1 dBTP"), or
+        "none". None means not given; the ceiling is then full scale wherever there is a target.
     place : function
         From a key to the place a fault is reported at.
 
@@ -147,8 +148,11 @@ def read_level(given: Mapping[str, Any], place: Callable[[str], str]) -> Level:
             faults.append(Fault(place("target"), "key 'target' is missing", f'a level such as "-14 {unit}"'))
         elif raw is not None:
             target = _read_db(raw, unit, place("target"), faults)
-    if given.get("ceiling") is not None:
-        ceiling = _read_db(given["ceiling"], "dBTP", place("ceiling"), faults)
+    raw = given.get("ceiling")
+    if raw is None:
+        ceiling = None if target is None else USUAL_CEILING_DBTP
+    elif raw != "none":
+        ceiling = _read_db(raw, "dBTP", place("ceiling"), faults)
     if faults:
         raise InputError(faults)
     return Level(measure, target, ceiling)

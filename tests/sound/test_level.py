@@ -81,15 +81,16 @@ def test_silence_can_be_left_alone():
 @pytest.mark.parametrize(
     ("given", "level"),
     [
-        ({"target": "-14 LUFS"}, Level("momentary", -14.0)),
-        ({"target": -14}, Level("momentary", -14.0)),
-        ({"target": "-14lufs", "measure": "integrated"}, Level("integrated", -14.0)),
-        ({"target": "-1.5 dBTP", "measure": "true-peak"}, Level("true-peak", -1.5)),
+        ({"target": "-14 LUFS"}, Level("momentary", -14.0, 0.0)),
+        ({"target": -14}, Level("momentary", -14.0, 0.0)),
+        ({"target": "-14lufs", "measure": "integrated"}, Level("integrated", -14.0, 0.0)),
+        ({"target": "-1.5 dBTP", "measure": "true-peak"}, Level("true-peak", -1.5, 0.0)),
         ({"target": "-14 LUFS", "ceiling": "-1 dBTP"}, Level("momentary", -14.0, -1.0)),
-        ({"target": "-14 LUFS", "ceiling": None}, Level("momentary", -14.0)),
+        ({"target": "-14 LUFS", "ceiling": None}, Level("momentary", -14.0, 0.0)),
+        ({"target": "-14 LUFS", "ceiling": "none"}, Level("momentary", -14.0)),
         ({"measure": "none"}, Level("none")),
         ({"measure": "none", "ceiling": -1}, Level("none", None, -1.0)),
-        ({"measure": "peak", "target": 0}, Level("peak", 0.0)),
+        ({"measure": "peak", "target": 0}, Level("peak", 0.0, 0.0)),
     ],
 )
 def test_levels_as_written(given, level):
@@ -134,11 +135,11 @@ def test_faults_are_reported_together(given, faults):
 @pytest.mark.parametrize(
     ("text", "level"),
     [
-        ("-14 LUFS", Level("momentary", -14.0)),
-        ("-14LUFS", Level("momentary", -14.0)),
-        ("-14 lufs integrated", Level("integrated", -14.0)),
-        ("-1 dBTP", Level("true-peak", -1.0)),
-        ("-3 dBFS", Level("peak", -3.0)),
+        ("-14 LUFS", Level("momentary", -14.0, 0.0)),
+        ("-14LUFS", Level("momentary", -14.0, 0.0)),
+        ("-14 lufs integrated", Level("integrated", -14.0, 0.0)),
+        ("-1 dBTP", Level("true-peak", -1.0, 0.0)),
+        ("-3 dBFS", Level("peak", -3.0, 0.0)),
         ("none", Level("none")),
     ],
 )
