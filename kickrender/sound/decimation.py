@@ -15,6 +15,7 @@ Source: common practice (half-band filters from a Kaiser window), from memory; t
 
 from __future__ import annotations
 
+import functools
 from collections.abc import Callable
 
 import numpy as np
@@ -74,6 +75,7 @@ def decimate(sampler: Sampler, count: int, oversample: int, *, block: int = BLOC
     return samples
 
 
+@functools.cache
 def reach(oversample: int) -> int:
     """How many oversampled values before, and after, its own time one sample depends on."""
     return sum(_half_length(taps) << stage for stage, taps in enumerate(_stages(oversample)))
