@@ -55,8 +55,12 @@ def ladder_text(nets: int) -> str:
     before = "drive"
     for k in range(1, nets + 1):
         net = f"n{k}"
-        lines.append(f'R{k} = {{ kind = "resistor", value = {total_ohm / nets!r}, between = ["{before}", "{net}"] }}')
-        lines.append(f'C{k} = {{ kind = "capacitor", value = {total_farad / nets!r}, between = ["{net}", "ground"] }}')
+        lines.append(
+            f'R{k:03d} = {{ kind = "resistor", value = {total_ohm / nets!r}, between = ["{before}", "{net}"] }}'
+        )
+        lines.append(
+            f'C{k:03d} = {{ kind = "capacitor", value = {total_farad / nets!r}, between = ["{net}", "ground"] }}'
+        )
         if k % 5 == 0:
             for name, anode, cathode in ((f"U{k}", net, "ground"), (f"D{k}", "ground", net)):
                 lines.append(f'{name} = {{ kind = "diode", model = "clip", anode = "{anode}", cathode = "{cathode}" }}')
