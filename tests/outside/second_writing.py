@@ -20,6 +20,8 @@ import numpy as np
 from sksundae import ida
 
 from kickrender.circuit.records import GROUND, Constant, Points, Pulse, ResolvedCircuit, ResolvedPart, Sine, Wave
+from tests.outside import further_writing
+from tests.outside.further_writing import Further
 
 BOLTZMANN = 1.380649e-23  # [J/K] exact since 2019
 CHARGE = 1.602176634e-19  # [C] exact since 2019
@@ -78,11 +80,11 @@ def saturation_current_at(values: dict[str, float], key: str, temperature: float
 
 @dataclass
 class Trajectory:
-    """times : (n,) [s]; volts : net -> (n,) [V]; steps : how many IDA took."""
+    """times : (n,) [s]; volts : net -> (n,) [V]; evaluations : of F, over all intervals."""
 
     times: np.ndarray
     volts: dict[str, np.ndarray]
-    steps: int
+    evaluations: int
 
 
 class SecondWriting:
@@ -101,6 +103,7 @@ class SecondWriting:
         diodes = [part for part in parts if part.kind == "diode"]
         inner = [part.name for part in diodes if self._values(part).get("series_resistance", 0.0) > 0.0]
         self.names = [*nets, *(f"{name}:inner" for name in inner), *(f"{part.name}:current" for part in coils)]
+        self.names += further_writing.names(parts)
         self.size = len(self.names)
         self.place = {name: index for index, name in enumerate([*self.names, *self.known])}
         width = len(self.place)
@@ -115,11 +118,27 @@ class SecondWriting:
                 self._pot(part)
             elif part.kind == "inductor":
                 self._coil(part)
+            else:
+                known = ("diode", "npn", "pnp", "opamp", *further_writing.KINDS)
+                assert part.kind in known, f"kind '{part.kind}' is not written here"
         self._junctions(diodes, [part for part in parts if part.kind in ("npn", "pnp")], width)
         self._opamps([part for part in parts if part.kind == "opamp"], width)
+        self._further(parts)
         self.start = 0.0  # of the input segment in force
         self._full = np.zeros(width)
+        self._full[self.size + 1 : self.size + 1 + len(circuit.nets)] = list(circuit.nets.values())
         self._full_slope = np.zeros(width)
+
+    def _further(self, parts: list[ResolvedPart]) -> None:
+        """Every other kind of part; last, since some take the place of current laws."""
+
+        def saturation(part: ResolvedPart) -> float:
+            return saturation_current_at(self._values(part), "saturation_current", self.circuit.temperature_k)
+
+        self.further = Further(parts, self.place, self.size, self.thermal, saturation)
+        for part in parts:
+            self.further.stamp(part, self.conductance, self.capacitance)
+        self.further.own_rows(parts, list(self.outputs), (self.conductance, self.capacitance, self.scatter))
 
     @staticmethod
     def _values(part: ResolvedPart) -> dict[str, float]:
@@ -202,6 +221,7 @@ class SecondWriting:
             self.early[order] = 1.0 / values["early_voltage"] if "early_voltage" in values else 0.0
         self.gather, self.scatter = gather, scatter[: self.size]
         self.saturation, self.scale, self.diodes = saturation, scale, count_d
+        self.spans = slice(count_d, count_d + count_q), slice(count_d + count_q, count_d + 2 * count_q)
 
     def _opamps(self, parts: list[ResolvedPart], width: int) -> None:
         """Rows of the outputs: (v_o' - its law)/S, in place of the current law that the ideal output makes void."""
@@ -224,32 +244,32 @@ class SecondWriting:
         self.capacitance[self.outputs, self.outputs] = 1.0 / self.slew
 
     def _known_at(self, time: float) -> None:
-        for index, volts in enumerate((0.0, *self.circuit.nets.values()), self.size):
-            self._full[index], self._full_slope[index] = volts, 0.0
         for index, wave in enumerate(self.circuit.inputs.values(), self.size + 1 + len(self.circuit.nets)):
             self._full[index], self._full_slope[index] = level_and_slope(wave, time, self.start)
 
-    def _currents(self, full: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
-        """Junction currents i and their slopes over the gathered voltages, (n, n)."""
+    def _currents(self, full: np.ndarray) -> tuple[np.ndarray, np.ndarray, np.ndarray, np.ndarray]:
+        """Junction currents i, and what their slopes are made of: voltages, plain currents and their slopes."""
         voltage = self.gather @ full
         growth, slope = bounded_exp(voltage / self.scale)
         plain, plain_slope = self.saturation * (growth - 1.0), self.saturation * slope / self.scale
-        count_d, count_q = self.diodes, len(self.forward_gain)
-        e, c = slice(count_d, count_d + count_q), slice(count_d + count_q, None)
-        across = 1.0 - voltage[c] * self.early
-        transport = plain[e] - plain[c]
-        current, slopes = plain.copy(), np.diag(plain_slope)
-        current[e] = transport * across - plain[c] / self.reverse_gain
+        current, (e, c) = plain.copy(), self.spans
+        current[e] = (plain[e] - plain[c]) * (1.0 - voltage[c] * self.early) - plain[c] / self.reverse_gain
         current[c] = plain[e] / self.forward_gain + plain[c] / self.reverse_gain
-        if count_q:
-            rows = np.arange(count_q)
-            slopes[count_d + rows, count_d + rows] = plain_slope[e] * across
-            slopes[count_d + rows, count_d + count_q + rows] = (
-                -plain_slope[c] * (across + 1.0 / self.reverse_gain) - transport * self.early
-            )
-            slopes[count_d + count_q + rows, count_d + rows] = plain_slope[e] / self.forward_gain
-            slopes[count_d + count_q + rows, count_d + count_q + rows] = plain_slope[c] / self.reverse_gain
-        return current, slopes
+        return current, voltage, plain, plain_slope
+
+    def _current_slopes(self, voltage: np.ndarray, plain: np.ndarray, plain_slope: np.ndarray) -> np.ndarray:
+        """Slopes of the junction currents over the gathered voltages, (n, n)."""
+        slopes, (e, c) = np.diag(plain_slope), self.spans
+        rows = np.arange(len(self.forward_gain))
+        rows_e, rows_c = rows + e.start, rows + c.start
+        across = 1.0 - voltage[c] * self.early
+        slopes[rows_e, rows_e] = plain_slope[e] * across
+        slopes[rows_e, rows_c] = (
+            -plain_slope[c] * (across + 1.0 / self.reverse_gain) - (plain[e] - plain[c]) * self.early
+        )
+        slopes[rows_c, rows_e] = plain_slope[e] / self.forward_gain
+        slopes[rows_c, rows_c] = plain_slope[c] / self.reverse_gain
+        return slopes
 
     def _rails(self, full: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
         volts = full[self.outputs]
@@ -261,8 +281,9 @@ class SecondWriting:
         """F(t, y, y'), in place. [A], op-amp rows without unit"""
         self._known_at(time)
         self._full[: self.size], self._full_slope[: self.size] = y, slope
-        current, _ = self._currents(self._full)
+        current, *_ = self._currents(self._full)
         out[:] = self.conductance @ self._full + self.capacitance @ self._full_slope + self.scatter @ current
+        out += self.further.currents(self._full)
         if len(self.outputs):
             (high, _), (low, _) = self._rails(self._full)
             out[self.outputs] -= np.tanh(self.difference @ self._full) - high + low
@@ -271,8 +292,9 @@ class SecondWriting:
         """dF/dv over unknown and known nets, (size, width)."""
         self._known_at(time)
         self._full[: self.size] = y
-        _, slopes = self._currents(self._full)
-        matrix = self.conductance + self.scatter @ slopes @ self.gather
+        _, *parts = self._currents(self._full)
+        matrix = self.conductance + self.scatter @ self._current_slopes(*parts) @ self.gather
+        matrix += self.further.slopes(self._full)
         if len(self.outputs):
             (_, high), (_, low) = self._rails(self._full)
             steep = 1.0 - np.tanh(self.difference @ self._full) ** 2
@@ -328,7 +350,7 @@ class SecondWriting:
         times = np.asarray(times, dtype=float)
         ends = sorted({time for wave in self.circuit.inputs.values() for time in corners(wave)} | {0.0})
         ends = [time for time in ends if time < times[-1]] + [float(times[-1])]
-        y, steps = self.rest(), 0
+        y, evaluations = self.rest(), 0
         states = np.empty((len(times), self.size))
         states[times <= 0.0] = y
         for begin, end in zip(ends[:-1], ends[1:], strict=True):
@@ -347,8 +369,8 @@ class SecondWriting:
             assert solution.success, solution.message
             states[inside] = solution.y[np.isin(solution.t, times[inside])]
             y = solution.y[-1].copy()
-            steps += int(getattr(solution, "nfev", 0))
-        return Trajectory(times, {net: self._trace(net, times, states) for net in nets}, steps)
+            evaluations += int(solution.nfev)
+        return Trajectory(times, {net: self._trace(net, times, states) for net in nets}, evaluations)
 
     def _trace(self, net: str, times: np.ndarray, states: np.ndarray) -> np.ndarray:
         index = self.place[net]
