@@ -9,6 +9,7 @@ from typing import Any
 from kickrender.circuit.kinds import Choice, Flag, Quantity
 from kickrender.circuit.values import parse_value, shown
 from kickrender.errors import Fault, InputError, nearest_name
+from kickrender.sound.measure import CONCERT_PITCH_HZ
 
 FORMATS = ("pcm16", "pcm24", "float32")
 LOWEST_RATE_HZ, HIGHEST_RATE_HZ = 22_050, 192_000
@@ -26,6 +27,7 @@ class SoundOptions:
     length_s : None means until the sound has died away (-90 dB of its peak), at most LONGEST_UNASKED_S.
     oversample : how many times the file's rate the solution is sampled at before decimation; 1 means unfiltered.
     raw : volts over full scale from t = 0, with no level, trim, fade or dither.
+    concert_pitch_hz : A4, by which notes are named; 440 Hz of ISO 16 unless asked otherwise. [Hz]
     """
 
     rate_hz: int = 48_000
@@ -33,6 +35,7 @@ class SoundOptions:
     length_s: float | None = None
     oversample: int = 8
     raw: bool = False
+    concert_pitch_hz: float = CONCERT_PITCH_HZ
 
     @property
     def longest_s(self) -> float:
@@ -41,7 +44,7 @@ class SoundOptions:
 
 
 def read_options(given: Mapping[str, Any], place: Callable[[str], str]) -> SoundOptions:
-    """The options written as `rate`, `format`, `length`, `oversample`, `raw`, checked together.
+    """The options written as `rate`, `format`, `length`, `oversample`, `raw`, `concert_pitch`, checked together.
 
     Parameters
     ----------
@@ -94,10 +97,12 @@ _RATE = Quantity("Hz", "samples per second", at_least=LOWEST_RATE_HZ, at_most=HI
 _LENGTH = Quantity("s", "length of the file", at_least=SHORTEST_S, at_most=LONGEST_S)
 _FORMAT = Choice("sample format", FORMATS)
 _RAW = Flag("whether to leave the samples as they come")
+_CONCERT_PITCH = Quantity("Hz", "A4, by which notes are named", at_least=400.0, at_most=480.0)
 _READERS: Mapping[str, tuple[str, Callable[[object, str], Any]]] = {
     "rate": ("rate_hz", _whole(_RATE)),
     "format": ("format", _FORMAT.read),
     "length": ("length_s", _LENGTH.read),
     "oversample": ("oversample", _oversample),
     "raw": ("raw", lambda raw, place: bool(_RAW.read(raw, place))),
+    "concert_pitch": ("concert_pitch_hz", _CONCERT_PITCH.read),
 }

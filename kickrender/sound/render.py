@@ -156,7 +156,7 @@ def _heard(circuit: Circuit, solution: Solution, options: SoundOptions, probes: 
     samples = at_rate(solution.circuit.output)
     if not options.raw:
         samples = fade(trim(samples, options.rate_hz), options.rate_hz)
-    measurements = measure(samples, options.rate_hz)
+    measurements = measure(samples, options.rate_hz, options.concert_pitch_hz)
     others = {net: at_rate(net)[: len(samples)] for net in probes}
     if not options.raw:
         others = {net: fade(values, options.rate_hz) for net, values in others.items()}
