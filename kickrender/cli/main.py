@@ -13,6 +13,7 @@ from collections.abc import Sequence
 import click
 
 from kickrender import __version__
+from kickrender.cli.compare import compare
 from kickrender.cli.list_shipped import list_shipped
 from kickrender.cli.pack import pack
 from kickrender.cli.render import render
@@ -47,7 +48,7 @@ def kickrender(context: click.Context) -> None:
         click.echo(context.get_help())
 
 
-for command in (list_shipped, show, render, pack):
+for command in (list_shipped, show, render, pack, compare):
     kickrender.add_command(command)
 
 
