@@ -52,12 +52,12 @@ def test_charge_is_shared_not_lost(sizes):
 
 
 PERIODS = 1000
-DRIFT = {1e-8: 1e-5, DEFAULT_TOLERANCE: 5e-3}  # stated bounds on the energy lost over 1,000 periods
+DRIFT = {1e-8: 2e-6, DEFAULT_TOLERANCE: 5e-4}  # stated bounds on the energy lost over 1,000 periods
 
 
 @pytest.mark.parametrize("tolerance", DRIFT)
 def test_energy_in_a_lossless_lc(tolerance):
-    """Over 1,000 periods the energy drifts by less than stated: 1e-5 at 1e-8, 0.5 % (0.02 dB) at the default."""
+    """Over 1,000 periods the energy drifts by less than stated: 2e-6 at 1e-8, 5e-4 (0.002 dB) at the default."""
     henry, farad, volts = 0.1, 1e-6, 2.0
     chosen = circuit({"L": "inductor 0.1 out ground", "C": "capacitor 1u out ground"})
     (current,) = set(rest_state(chosen)) - {"out"}
