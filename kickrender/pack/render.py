@@ -35,24 +35,24 @@ Stop = Callable[[], bool]
 
 def render_batch(batch: Batch, stop: Stop) -> Iterator[Outcome]:
     """Render and write every hit of a batch, one outcome each; ends early, between two files, when `stop()` is true."""
-    takes = _heard(batch)
+    takes = heard(batch)
     for group in groups_of(batch.hits):
-        heard: list[tuple[Hit, Take]] = []
+        whole: list[tuple[Hit, Take]] = []
         for hit, take in itertools.islice(takes, len(group)):
             if stop():
                 return
             if isinstance(take, Take):
-                heard.append((hit, take))
+                whole.append((hit, take))
             else:
                 yield Outcome(hit.name, str(take))
-        if not heard:
+        if not whole:
             continue
         try:
-            gain = batch.gains.get(group[0].group) or gain_of([take.measurements for _, take in heard], batch.level)
+            gain = batch.gains.get(group[0].group) or gain_of([take.measurements for _, take in whole], batch.level)
         except KickrenderError as error:
-            yield from (Outcome(hit.name, str(error)) for hit, _ in heard)
+            yield from (Outcome(hit.name, str(error)) for hit, _ in whole)
             continue
-        for hit, take in heard:
+        for hit, take in whole:
             if stop():
                 return
             yield _written(batch, hit, take, gain)
@@ -60,7 +60,7 @@ def render_batch(batch: Batch, stop: Stop) -> Iterator[Outcome]:
 
 def measure_batch(batch: Batch, stop: Stop) -> Iterator[Outcome]:
     """Solve and measure every hit of a batch, writing nothing."""
-    for hit, take in _heard(batch):
+    for hit, take in heard(batch):
         if stop():
             return
         if isinstance(take, Take):
@@ -74,11 +74,11 @@ def gain_of(measurements: list[Measurements], level: Level | None) -> Gain:
     return Gain(0.0) if level is None else level_gain(measurements, level)
 
 
-def _heard(batch: Batch) -> Iterator[tuple[Hit, Take | KickrenderError]]:
+def heard(batch: Batch, measured: bool = True) -> Iterator[tuple[Hit, Take | KickrenderError]]:
     """Every hit's take or the reason there is none, in the order of its groups."""
     hits = [hit for group in groups_of(batch.hits) for hit in group]
     settings = [(batch.circuits[hit.circuit], hit.settings) for hit in hits]
-    yield from zip(hits, hear_each(settings, batch.options), strict=True)
+    yield from zip(hits, hear_each(settings, batch.options, measured=measured), strict=True)
 
 
 def _written(batch: Batch, hit: Hit, take: Take, gain: Gain) -> Outcome:

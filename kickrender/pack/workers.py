@@ -16,20 +16,21 @@ from concurrent.futures.process import BrokenProcessPool
 from multiprocessing import connection
 from multiprocessing.sharedctypes import Synchronized
 from multiprocessing.synchronize import Event
-from typing import Any
+from typing import Any, TypeVar
 
 from kickrender.errors import WorkerError
-from kickrender.pack.batches import Batch
-from kickrender.pack.render import Outcome, Stop
+from kickrender.pack.render import Stop
 
-Work = Callable[[Batch, Stop], Iterator[Outcome]]
+Job = TypeVar("Job")  # a batch: whatever tells a worker what to do
+Out = TypeVar("Out")  # an outcome: what it answers
+Work = Callable[[Job, Stop], Iterator[Out]]
 Progress = Callable[[int], None]
 
 LOOK_EVERY_S = 0.2
 _QUEUED_PER_JOB = 2  # enough to keep a worker busy, few enough that memory does not grow with the pack
 
 
-def run_batches(batches: Iterable[Batch], work: Work, jobs: int, progress: Progress) -> Iterator[Outcome]:
+def run_batches(batches: Iterable[Job], work: Work[Job, Out], jobs: int, progress: Progress) -> Iterator[Out]:
     """Outcomes of every batch, in no particular order.
 
     Parameters
@@ -50,11 +51,11 @@ def run_batches(batches: Iterable[Batch], work: Work, jobs: int, progress: Progr
     yield from _spread(batches, work, jobs, progress)
 
 
-def _spread(batches: Iterable[Batch], work: Work, jobs: int, progress: Progress) -> Iterator[Outcome]:
+def _spread(batches: Iterable[Job], work: Work[Job, Out], jobs: int, progress: Progress) -> Iterator[Out]:
     context = multiprocessing.get_context("spawn")
     stop, done = context.Event(), context.Value("q", 0)
     pool = ProcessPoolExecutor(jobs, context, _start_worker, (stop, done))
-    waiting: set[Future[list[Outcome]]] = set()
+    waiting: set[Future[list[Out]]] = set()
     queue = iter(batches)
     told = 0
     try:
@@ -97,7 +98,7 @@ def _end_with_parent() -> None:
         os._exit(1)
 
 
-def _work(work: Work, batch: Batch) -> list[Outcome]:
+def _work(work: Work[Job, Out], batch: Job) -> list[Out]:
     outcomes = []
     for outcome in work(batch, _stop.is_set):
         outcomes.append(outcome)

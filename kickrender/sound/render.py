@@ -3,13 +3,15 @@
 `hear_each` solves, decimates, cuts and measures; `finish` applies the gain and turns samples into a file's numbers.
 Between them whoever renders many hits can set one gain for a group. Cutting and fading come before the measuring, not
 after as a person at a desk would do it: both follow the peak, so a gain in between changes no byte, and what is
-measured is what the file holds.
+measured is what the file holds. Who knows the gain beforehand and wants the file's numbers only need not measure:
+`hear_each(..., measured=False)`, then `numbers`.
 """
 
 from __future__ import annotations
 
 from collections.abc import Iterable, Iterator, Mapping, Sequence
 from dataclasses import asdict, dataclass, field, replace
+from functools import cached_property
 from pathlib import Path
 from typing import Any
 
@@ -43,7 +45,7 @@ class Take:
 
     samples : (n,), volts over full scale, cut and faded unless raw.
     probes : net -> (n,), volts over full scale, cut and faded alike.
-    measurements : of `samples`.
+    measurements : of `samples`, taken when they are first asked for.
     notes : what a person should know, in words.
     """
 
@@ -52,8 +54,12 @@ class Take:
     options: SoundOptions
     samples: Floats
     probes: Mapping[str, Floats]
-    measurements: Measurements
     notes: tuple[str, ...]
+
+    @cached_property
+    def measurements(self) -> Measurements:
+        """What was measured of `samples`; raises MeasurementError."""
+        return measure(self.samples, self.options.rate_hz, self.options.concert_pitch_hz)
 
 
 @dataclass(frozen=True, eq=False)
@@ -114,7 +120,10 @@ def write_pair(path: Path, sound: Sound, facts: Mapping[str, Any]) -> None:
 
 
 def hear_each(
-    hits: Sequence[tuple[Circuit, Settings]], options: SoundOptions, probes: Sequence[str] = ()
+    hits: Sequence[tuple[Circuit, Settings]],
+    options: SoundOptions,
+    probes: Sequence[str] = (),
+    measured: bool = True,
 ) -> Iterator[Take | KickrenderError]:
     """Every hit's take in order, or the reason there is none. All are solved at once, side by side.
 
@@ -124,6 +133,8 @@ def hear_each(
     options : SoundOptions
     probes : sequence of str
         Nets to keep beside the output.
+    measured : bool, default True
+        Whether to measure, so that a sound without measurements fails here. Else a take measures when asked.
 
     Raises
     ------
@@ -138,9 +149,13 @@ def hear_each(
             yield solution
             continue
         try:
-            yield _heard(circuit, solution, options, probes)
+            take = _heard(circuit, solution, options, probes)
+            if measured:
+                _ = take.measurements
         except KickrenderError as error:
             yield error
+            continue
+        yield take
 
 
 def _heard(circuit: Circuit, solution: Solution, options: SoundOptions, probes: Iterable[str]) -> Take:
@@ -156,11 +171,10 @@ def _heard(circuit: Circuit, solution: Solution, options: SoundOptions, probes: 
     samples = at_rate(solution.circuit.output)
     if not options.raw:
         samples = fade(trim(samples, options.rate_hz), options.rate_hz)
-    measurements = measure(samples, options.rate_hz, options.concert_pitch_hz)
     others = {net: at_rate(net)[: len(samples)] for net in probes}
     if not options.raw:
         others = {net: fade(values, options.rate_hz) for net, values in others.items()}
-    return Take(circuit, solution, options, samples, others, measurements, notes)
+    return Take(circuit, solution, options, samples, others, notes)
 
 
 def _samples_wanted(solution: Solution, options: SoundOptions) -> tuple[int, tuple[str, ...]]:
@@ -207,17 +221,10 @@ def finish(take: Take, gain: Gain, level: Level | None, seed: int | None = None)
     options = take.options
     level = None if options.raw else level
     digest = recipe_digest(hit_recipe(take.circuit, take.solution.circuit, options, level))
-    samples, probes, measurements = take.samples, dict(take.probes), take.measurements
+    samples, probes, pcm = numbers(take, gain, level, dither_seed(digest) if seed is None else seed)
+    measurements = take.measurements
     if level is not None and gain.db != 0.0:
-        samples = samples * gain.factor
-        probes = {net: values * gain.factor for net, values in probes.items()}
         measurements = _after_gain(measurements, gain, samples, options.rate_hz)
-    channels = np.column_stack([samples, *probes.values()]) if probes else samples
-    if options.raw:
-        seed = None
-    elif seed is None:
-        seed = dither_seed(digest)
-    pcm = quantise(channels, options.format, seed)
     notes = [*take.notes, *([gain.note] if level is not None and gain.note else [])]
     facts = {
         **sound_facts(take.circuit, take.solution, options),
@@ -234,6 +241,17 @@ def finish(take: Take, gain: Gain, level: Level | None, seed: int | None = None)
         "recipe_digest": digest,
     }
     return Sound(samples, options.rate_hz, facts, probes, pcm)
+
+
+def numbers(take: Take, gain: Gain, level: Level | None, seed: int) -> tuple[Floats, dict[str, Floats], Pcm]:
+    """Samples and probes after the gain, and the file's numbers; see `finish`, which adds the facts."""
+    options = take.options
+    samples, probes = take.samples, dict(take.probes)
+    if level is not None and not options.raw and gain.db != 0.0:
+        samples = samples * gain.factor
+        probes = {net: values * gain.factor for net, values in probes.items()}
+    channels = np.column_stack([samples, *probes.values()]) if probes else samples
+    return samples, probes, quantise(channels, options.format, None if options.raw else seed)
 
 
 def _after_gain(before: Measurements, gain: Gain, samples: Floats, rate_hz: int) -> Measurements:
