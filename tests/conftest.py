@@ -9,7 +9,7 @@ import pytest
 def pytest_configure(config: pytest.Config) -> None:
     if hasattr(config, "workerinput") or config.option.collectonly:  # a worker: its controller has compiled already
         return
-    subprocess.run([sys.executable, "-c", WARM_UP], check=True)
+    subprocess.run([sys.executable, "-c", WARM_UP])  # when it fails, the tests say so better
 
 
 WARM_UP = """

@@ -120,3 +120,14 @@ def test_a_lost_worker_is_told(many: Path) -> None:
     batches = batches_of(plan, many.parent, groups_of(plan.hits), 2, {})
     with pytest.raises(WorkerError, match=r"a worker process died, perhaps for want of memory.* run again"):
         list(run_batches(batches, die, 2, lambda hits: None))
+
+
+def tell_handler(batch: Batch, stop: Stop) -> Iterator[Outcome]:
+    yield Outcome(str(signal.getsignal(signal.SIGINT)))
+
+
+def test_ctrl_c_reaches_the_parent_only(many: Path) -> None:
+    plan = plan_pack(read_pack(many))
+    batches = batches_of(plan, many.parent, groups_of(plan.hits), 2, {})
+    outcomes = run_batches(batches, tell_handler, 2, lambda hits: None)
+    assert {outcome.name for outcome in outcomes} == {str(signal.SIG_IGN)}
