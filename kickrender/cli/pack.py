@@ -17,16 +17,22 @@ from kickrender.errors import Fault, InputError, KickrenderError
 @click.argument("pack")
 @click.option("--out", type=click.Path(path_type=Path), help="The folder to fill; made when missing.")
 @click.option("--jobs", metavar="N", help="Worker processes.  [default: one per core]")
+@click.option(
+    "--only", type=click.Path(path_type=Path), metavar="FILE", help="Render the hits named in this list alone."
+)
 @click.option("--dry-run", is_flag=True, help="Check everything and name every hit; render nothing.")
-def pack(pack: str, out: Path | None, jobs: str | None, dry_run: bool) -> None:
-    """Render every hit of PACK: one WAV and one sidecar each, and pack.json and pack.csv over all.
+def pack(pack: str, out: Path | None, jobs: str | None, only: Path | None, dry_run: bool) -> None:
+    """Render every hit of PACK: one WAV and one sidecar each; pack.json, pack.csv and pack.png over all; and a
+    listening sheet, index.html, to hear, sort and choose hits in a browser.
 
-    A second run renders only what is missing or changed. No file depends on the number of workers.
+    A second run renders only what is missing or changed. No file depends on the number of workers. The listening
+    sheet saves favourites as a list that --only takes; a hit is the same file alone as in the whole pack.
 
     \b
     Examples:
       kickrender pack night-ferry --out night-ferry
       kickrender pack my-pack.toml --out library --jobs 4
+      kickrender pack my-pack.toml --only favourites.txt --out best
       kickrender pack my-pack.toml --dry-run
     """
     if out is None and not dry_run:
@@ -36,6 +42,10 @@ def pack(pack: str, out: Path | None, jobs: str | None, dry_run: bool) -> None:
     from kickrender.pack.read import read_pack
 
     plan = plan_pack(read_pack(pack))
+    if only is not None:
+        from kickrender.pack.only import keep_only, read_names
+
+        plan = keep_only(plan, read_names(only), str(only))
     if out is None or dry_run:
         click.echo(f"{plan.title}: {len(plan.hits)} hits")
         for hit in plan.hits:

@@ -58,7 +58,7 @@ def remove_manifest(folder: Path) -> None:
 
 def stale_names(plan: Plan, folder: Path) -> tuple[str, ...]:
     """Hits on disk, by name, that this pack does not hold (any more)."""
-    planned = {hit.name for hit in plan.hits}
+    planned = {hit.name for hit in (*plan.hits, *plan.left_out)}
     found = (path.relative_to(folder).with_suffix("").as_posix() for path in folder.rglob("*.json"))
     return tuple(sorted(n for n in found if n not in planned and read_sidecar(json_path(folder, n)) is not None))
 

@@ -89,7 +89,10 @@ class Hit:
 
 @dataclass(frozen=True)
 class Plan:
-    """Every hit of a pack in stable order, ready to render: nothing in it can be wrong any more."""
+    """Every hit of a pack in stable order, ready to render: nothing in it can be wrong any more.
+
+    left_out : hits that are not to be made this time; who shares a gain with them still has that gain.
+    """
 
     title: str
     about: str
@@ -98,3 +101,4 @@ class Plan:
     level: Level | None
     together: tuple[str, ...]
     hits: tuple[Hit, ...]
+    left_out: tuple[Hit, ...] = ()

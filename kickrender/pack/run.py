@@ -13,6 +13,7 @@ from kickrender.pack.batches import MOST_HITS, batches_of, groups_of
 from kickrender.pack.manifest import remove_manifest, stale_names, write_manifest
 from kickrender.pack.records import Hit, Plan
 from kickrender.pack.render import Outcome, gain_of, measure_batch, render_batch
+from kickrender.pack.sheets import remove_sheets, sheet_of, write_sheets
 from kickrender.pack.sidecar import is_done
 from kickrender.pack.workers import Progress, run_batches
 from kickrender.sound.files import sweep_unfinished
@@ -43,7 +44,7 @@ def missing_hits(plan: Plan, folder: Path) -> list[Hit]:
 
 
 def render_plan(plan: Plan, folder: Path, jobs: int = 1, progress: Progress = lambda hits: None) -> Result:
-    """Fill `folder` with the pack: a WAV and a sidecar for each hit, then pack.json and pack.csv over all.
+    """Fill `folder` with the pack: a WAV and a sidecar for each hit, then manifest and sheets over all.
 
     Parameters
     ----------
@@ -66,19 +67,22 @@ def render_plan(plan: Plan, folder: Path, jobs: int = 1, progress: Progress = la
         If a worker process died.
     """
     _open_folder(folder)
+    sheet_of(folder)  # somebody else's index.html is told of now, not after the rendering
     missing = missing_hits(plan, folder)
     kept = {hit.name for hit in plan.hits} - {hit.name for hit in missing}
     stale = stale_names(plan, folder)
     progress(len(kept))
     failed: dict[str, str] = {}
     if missing:
-        remove_manifest(folder)  # a manifest stands for a finished pack
+        remove_manifest(folder)  # a manifest stands for a finished pack, and so do the sheets
+        remove_sheets(folder)
         for outcome in _render(plan, folder, missing, jobs, progress):
             if outcome.fatal:
                 raise WriteError(outcome.failure)
             if outcome.failure:
                 failed[outcome.name] = outcome.failure
     write_manifest(plan, folder, failed)
+    write_sheets(folder)
     rendered = tuple(hit.name for hit in missing if hit.name not in failed)
     in_order = {hit.name: failed[hit.name] for hit in plan.hits if hit.name in failed}
     return Result(rendered, tuple(hit.name for hit in plan.hits if hit.name in kept), in_order, stale)
@@ -87,13 +91,20 @@ def render_plan(plan: Plan, folder: Path, jobs: int = 1, progress: Progress = la
 def _render(plan: Plan, folder: Path, missing: Sequence[Hit], jobs: int, progress: Progress) -> Iterator[Outcome]:
     jobs = max(1, min(jobs, len(missing) // FEWEST_PER_WORKER))
     groups = groups_of(missing)
-    large = [group for group in groups if len(group) > MOST_HITS]
-    gains = _measured_gains(plan, folder, large, jobs) if plan.together else {}
+    gains = measured_gains(plan, folder, _to_measure(plan, groups), jobs) if plan.together else {}
     yield from run_batches(batches_of(plan, folder, groups, jobs, gains), render_batch, jobs, progress)
 
 
-def _measured_gains(plan: Plan, folder: Path, groups: Sequence[Sequence[Hit]], jobs: int) -> dict[int, Gain]:
-    """The gain of each group that is too large to be held at once, from a run that only measures.
+def _to_measure(plan: Plan, groups: Sequence[tuple[Hit, ...]]) -> list[tuple[Hit, ...]]:
+    """Groups whose gain has to be known beforehand: too large to be held at once, or with hits that are left out."""
+    made = {group[0].group for group in groups}
+    left_out = {group[0].group: group for group in groups_of(plan.left_out) if group[0].group in made}
+    whole = [group + left_out.get(group[0].group, ()) for group in groups]
+    return [group for group in whole if len(group) > MOST_HITS or group[0].group in left_out]
+
+
+def measured_gains(plan: Plan, folder: Path, groups: Sequence[Sequence[Hit]], jobs: int) -> dict[int, Gain]:
+    """The gain of each of these groups, from a run that only measures.
 
     A group that cannot be measured has none here; its hits fail, with the reason, when they are rendered.
     """
