@@ -12,7 +12,7 @@ from kickrender.pack.records import Hit
 from kickrender.pack.sidecar import write_hit
 from kickrender.sound.level import Gain, Level, level_gain
 from kickrender.sound.measure import Measurements
-from kickrender.sound.render import Take, finish, hear_each
+from kickrender.sound.render import Sound, Take, finish, hear_each
 
 
 @dataclass(frozen=True)
@@ -35,6 +35,12 @@ Stop = Callable[[], bool]
 
 def render_batch(batch: Batch, stop: Stop) -> Iterator[Outcome]:
     """Render and write every hit of a batch, one outcome each; ends early, between two files, when `stop()` is true."""
+    for hit, sound in sounds_of(batch, stop):
+        yield _written(batch, hit, sound)
+
+
+def sounds_of(batch: Batch, stop: Stop) -> Iterator[tuple[Hit, Sound | KickrenderError]]:
+    """Every hit's finished sound, or the reason there is none; ends early when `stop()` is true."""
     takes = heard(batch)
     for group in groups_of(batch.hits):
         whole: list[tuple[Hit, Take]] = []
@@ -44,18 +50,23 @@ def render_batch(batch: Batch, stop: Stop) -> Iterator[Outcome]:
             if isinstance(take, Take):
                 whole.append((hit, take))
             else:
-                yield Outcome(hit.name, str(take))
+                yield hit, take
         if not whole:
             continue
         try:
             gain = batch.gains.get(group[0].group) or gain_of([take.measurements for _, take in whole], batch.level)
         except KickrenderError as error:
-            yield from (Outcome(hit.name, str(error)) for hit, _ in whole)
+            yield from ((hit, error) for hit, _ in whole)
             continue
         for hit, take in whole:
             if stop():
                 return
-            yield _written(batch, hit, take, gain)
+            try:
+                sound = finish(take, gain, batch.level, hit.seed)
+            except KickrenderError as error:
+                yield hit, error
+                continue
+            yield hit, sound
 
 
 def measure_batch(batch: Batch, stop: Stop) -> Iterator[Outcome]:
@@ -81,12 +92,11 @@ def heard(batch: Batch, measured: bool = True) -> Iterator[tuple[Hit, Take | Kic
     yield from zip(hits, hear_each(settings, batch.options, measured=measured), strict=True)
 
 
-def _written(batch: Batch, hit: Hit, take: Take, gain: Gain) -> Outcome:
+def _written(batch: Batch, hit: Hit, sound: Sound | KickrenderError) -> Outcome:
+    if isinstance(sound, KickrenderError):
+        return Outcome(hit.name, str(sound))
     try:
-        sound = finish(take, gain, batch.level, hit.seed)
         write_hit(batch, hit, sound)
     except WriteError as error:
         return Outcome(hit.name, str(error), fatal=True)
-    except KickrenderError as error:
-        return Outcome(hit.name, str(error))
     return Outcome(hit.name)
