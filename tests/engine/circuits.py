@@ -103,6 +103,55 @@ def resonator(q_leg: str = "1k", wave: str = STRIKE) -> ResolvedCircuit:
     )
 
 
+def comparator(wave: str = STRIKE) -> ResolvedCircuit:
+    """An op-amp without feedback: its tanh saturates exactly, and its row keeps only its own rate."""
+    return circuit(
+        {
+            "R1": "resistor 10k gate a",
+            "C1": "capacitor 10n a ground",
+            "U": "opamp fet-input a level switched plus minus",
+            "R2": "resistor 10k plus level",
+            "R3": "resistor 2k level ground",
+            "R4": "resistor 1k switched ground",
+            "D": "diode silicon switched out",
+            "R5": "resistor 10k out ground",
+            "C2": "capacitor 10n out ground",
+        },
+        inputs={"gate": wave},
+        nets=RAILS,
+    )
+
+
+def lopsided(wave: str = STRIKE) -> ResolvedCircuit:
+    """Transistors of both polarities, a coil, a switch and every kind of input."""
+    return circuit(
+        {
+            "R1": "resistor 22k gate base",
+            "Q1": "npn small-npn knot base ground",
+            "R2": "resistor 4k7 knot out",
+            "L1": "inductor 1 out far",
+            "C1": "capacitor 470n far ground",
+            "C2": "capacitor 220n out ground",
+            "Q2": "pnp small-pnp far low plus",
+            "R3": "resistor 220k low ground",
+            "R4": "resistor 47k low hum",
+            "S1": "switch true far drain",
+            "R5": "resistor 10k drain slope",
+            "R6": "resistor 10k bias out",
+        },
+        inputs={
+            "gate": wave,
+            "hum": 'sine = { amplitude = "1V", frequency = "333Hz", offset = "1V" }',
+            "slope": 'points = [["1ms", "0V"], ["2ms", "1V"]]',
+            "bias": 'constant = "0.5V"',
+        },
+        nets={"plus": "3V"},
+    )
+
+
+VOICES = {"resonator": resonator, "comparator": comparator, "lopsided": lopsided}
+
+
 def residual_db(found: np.ndarray, truth: np.ndarray) -> float:
     """RMS of the difference over the peak of the truth. [dB]"""
     rms = np.sqrt(np.mean((found - truth) ** 2))
