@@ -77,3 +77,12 @@ def _apart(times: list[float]) -> list[float]:
     for index in range(1, len(times)):
         times[index] = max(times[index], math.nextafter(times[index - 1], math.inf))
     return times
+
+
+def voltage_at(wave: Wave, time_s: float) -> float:
+    """A wave's voltage at a time; for display, as its sine comes from the C library. [V]"""
+    times, volts = corners(wave)
+    value = float(np.interp(time_s, times, volts))
+    if isinstance(wave, Sine):
+        value += wave.amplitude * math.sin(2.0 * math.pi * (wave.frequency * time_s + wave.phase_deg / 360.0))
+    return value

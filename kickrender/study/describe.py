@@ -1,4 +1,4 @@
-"""What a circuit is under given settings, and what it does at rest: controls, parts, rest voltages, poles."""
+"""What a circuit is under given settings, and what it does at rest: controls, parts, voltages, currents, poles."""
 
 from __future__ import annotations
 
@@ -7,8 +7,10 @@ from collections.abc import Mapping
 from typing import Any
 
 from kickrender.circuit import Circuit
-from kickrender.engine import poles, rest_state
+from kickrender.engine import Pole, poles, rest_state
+from kickrender.engine.currents import terminal_currents
 from kickrender.sound.sidecar import circuit_facts
+from kickrender.study.bench_view import DROP_OPEN_S, poles_with_drop_open
 
 
 def describe(circuit: Circuit, settings: Mapping[str, float | str | bool] | None = None) -> dict[str, Any]:
@@ -23,8 +25,9 @@ def describe(circuit: Circuit, settings: Mapping[str, float | str | bool] | None
     -------
     facts : dict of plain JSON values
         Beside what a sidecar says of a circuit: "about", "controls" (name -> what it moves, range, start, value),
-        "rest" (net -> volts; inductor -> amperes), "poles" (frequency in Hz, Q, time to -60 dB in s; None where it
-        is infinite).
+        "rest" (net -> volts; inductor -> amperes), "currents" (part -> terminal -> amperes into it, at rest), "poles"
+        (frequency in Hz, Q, time to -60 dB in s; None where it is infinite) at rest, and "poles_with_drop_open" about
+        the state "drop_open_s" after the strike.
 
     Raises
     ------
@@ -35,6 +38,7 @@ def describe(circuit: Circuit, settings: Mapping[str, float | str | bool] | None
     """
     resolved = circuit.resolve(settings)
     facts = circuit_facts(circuit, resolved)
+    rest = rest_state(resolved)
     coils = {name for name, part in circuit.parts.items() if part.kind == "inductor"}
     return {
         **facts,
@@ -52,19 +56,23 @@ def describe(circuit: Circuit, settings: Mapping[str, float | str | bool] | None
             }
             for name, control in circuit.controls.items()
         },
-        "rest": {
-            name: {"value": value, "unit": "A" if name in coils else "V"}
-            for name, value in sorted(rest_state(resolved).items())
+        "rest": {name: {"value": value, "unit": "A" if name in coils else "V"} for name, value in sorted(rest.items())},
+        "currents": {
+            part: {terminal: {"value": value, "unit": "A"} for terminal, value in terminals.items()}
+            for part, terminals in terminal_currents(resolved, rest).items()
         },
-        "poles": [
-            {
-                "frequency_hz": _finite(pole.frequency_hz),
-                "q": _finite(pole.q),
-                "decay_s": _finite(pole.decay_s),
-                "rings": bool(pole.rings),
-            }
-            for pole in poles(resolved)
-        ],
+        "poles": [_pole(pole) for pole in poles(resolved, rest)],
+        "drop_open_s": DROP_OPEN_S,
+        "poles_with_drop_open": [_pole(pole) for pole in poles_with_drop_open(resolved)],
+    }
+
+
+def _pole(pole: Pole) -> dict[str, Any]:
+    return {
+        "frequency_hz": _finite(pole.frequency_hz),
+        "q": _finite(pole.q),
+        "decay_s": _finite(pole.decay_s),
+        "rings": bool(pole.rings),
     }
 
 
