@@ -127,6 +127,8 @@ class ResolvedCircuit:
     nets : held nets -> voltage; `ground` is not listed and is 0 V. [V]
     inputs : driven net -> wave.
     settings : every control and every setting given, in canonical order, in SI units; for people and sidecars.
+    spread : how this one deviates from the circuit as written, "R1.value" -> factor, "temperature" -> kelvin added;
+        empty for parts that are exactly what they say.
     """
 
     name: str
@@ -137,3 +139,4 @@ class ResolvedCircuit:
     output: str
     full_scale_v: float
     settings: Mapping[str, float | bool] = field(default_factory=dict)
+    spread: Mapping[str, float] = field(default_factory=dict)

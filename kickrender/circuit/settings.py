@@ -117,8 +117,19 @@ def _address(circuit: Circuit, name: str, place: str) -> _Setting:
     raise InputError(Fault(place, f"unknown setting '{name}'", allowed, nearest_name(name, known)))
 
 
-def resolve(circuit: Circuit, settings: Mapping[str, float | str | bool], place: str = "setting") -> ResolvedCircuit:
-    """The circuit under the given settings, as the engine gets it; see `Circuit.resolve`."""
+Factors = Mapping[str, float]  # key of a part's own values or of its model -> what it is multiplied by
+
+
+def resolve(
+    circuit: Circuit,
+    settings: Mapping[str, float | str | bool],
+    place: str = "setting",
+    deviations: Mapping[str, Factors] | None = None,
+) -> ResolvedCircuit:
+    """The circuit under the given settings, as the engine gets it; see `Circuit.resolve`.
+
+    deviations : part -> how it deviates from what is written or set; see `spread`.
+    """
     faults: list[Fault] = []
     moved = {control_target(control): control.start for control in circuit.controls.values()}
     of_controls: dict[str, float | bool] = {name: control.start for name, control in circuit.controls.items()}
@@ -150,7 +161,8 @@ def resolve(circuit: Circuit, settings: Mapping[str, float | str | bool], place:
         },
         # By name, not in the file's order: two files of one digest must give the engine the same sums.
         parts={
-            name: _resolved(circuit, part, moved.get(("part", name))) for name, part in sorted(circuit.parts.items())
+            name: _resolved(circuit, part, moved.get(("part", name)), (deviations or {}).get(name))
+            for name, part in sorted(circuit.parts.items())
         },
         output=circuit.output,
         full_scale_v=circuit.full_scale_v,
@@ -158,8 +170,10 @@ def resolve(circuit: Circuit, settings: Mapping[str, float | str | bool], place:
     )
 
 
-def _resolved(circuit: Circuit, part: Part, value: float | None) -> ResolvedPart:
+def _resolved(circuit: Circuit, part: Part, value: float | None, factors: Factors | None) -> ResolvedPart:
     """The part at a value; the same object whenever both are the same, so that what is derived from it is shared."""
+    if factors:
+        return _electrical(part, value, factors)
     kept = circuit.resolved_parts
     key = (part.name, value)
     if key not in kept:
@@ -169,11 +183,28 @@ def _resolved(circuit: Circuit, part: Part, value: float | None) -> ResolvedPart
     return kept[key]
 
 
-def _electrical(part: Part, value: float | None) -> ResolvedPart:
+def _electrical(part: Part, value: float | None, factors: Factors | None = None) -> ResolvedPart:
     row = KINDS[part.kind]
     if value is not None and row.setting:
         part = replace(part, values={**part.values, row.setting: value})
+    if factors:
+        part = _deviating(part, factors)
     return ResolvedPart(part.name, part.kind, part.terminals, row.electrical(part), part.model)
+
+
+def _deviating(part: Part, factors: Factors) -> Part:
+    """The part with its values multiplied; its model, now its own, bears the part's name."""
+    values = {key: value * factors.get(key, 1.0) for key, value in part.values.items()}
+    if part.model is None:
+        return replace(part, values=values)
+    own = dict(part.model.values)
+    for key, rule in KINDS[part.kind].model.items():
+        # What a model takes from another of its keys (both junctions of one transistor) deviates with it.
+        source = rule.default if isinstance(rule.default, str) else key
+        alike = source in own and own.get(key) == part.model.values[source]
+        if key in own:
+            own[key] *= factors.get(key, factors.get(source, 1.0) if alike else 1.0)
+    return replace(part, values=values, model=replace(part.model, name=f"{part.model.name} of {part.name}", values=own))
 
 
 def unit_of(circuit: Circuit, name: str) -> str:
