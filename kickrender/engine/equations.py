@@ -17,6 +17,7 @@ from kickrender.engine.method import RODAS5P
 _PER_GAMMA = 1.0 / RODAS5P.gamma
 _HIGHEST_ARGUMENT = 80.0  # of a junction's exponential; continued linearly above
 _TWO_PI = 6.283185307179586
+_BEYOND = 1e300  # any growth
 
 
 @kernel
@@ -114,7 +115,7 @@ def assemble(code, coefficients, slopes, width):
 def factorise(code, coefficients, per_pivot, row_size, width):
     """Eliminate in place: multipliers (negated) below the pivots, U above, reciprocal pivots in `per_pivot`.
 
-    Returns the largest multiplier between rows scaled to equal size, one per lane; not a number if one is not.
+    Returns the largest multiplier between rows scaled to equal size, one per lane; _BEYOND where a pivot was zero.
     """
     lanes = len(width)
     first = code.first_w
@@ -142,6 +143,7 @@ def factorise(code, coefficients, per_pivot, row_size, width):
         size = load(row_size, code.growth[p, 1] * lanes, width)
         growth = multiplier * load(row_size, code.growth[p, 2] * lanes, width) / size
         growth = pick_less(growth, 0.0, 0.0 - growth, growth)
+        growth = pick_less(growth, _BEYOND, growth, _BEYOND)  # and where a pivot was nothing: 0/0 is not a number
         worst = pick_less(growth, worst, worst, growth)
     return worst
 
