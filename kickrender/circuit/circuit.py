@@ -62,8 +62,8 @@ class Circuit:
         return resolve(self, settings or {}, place)
 
     @cached_property
-    def resolved_parts(self) -> dict[tuple[str, float | None], ResolvedPart]:
-        """Parts resolved so far, by name and value set; see `settings.resolve`."""
+    def resolved_parts(self) -> dict[object, ResolvedPart]:
+        """Parts resolved so far, by name, value set and deviations; see `settings.resolve`."""
         return {}
 
     @cached_property

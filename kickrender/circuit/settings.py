@@ -171,15 +171,13 @@ def resolve(
 
 
 def _resolved(circuit: Circuit, part: Part, value: float | None, factors: Factors | None) -> ResolvedPart:
-    """The part at a value; the same object whenever both are the same, so that what is derived from it is shared."""
-    if factors:
-        return _electrical(part, value, factors)
+    """The part at a value; the same object whenever all is the same, so that what is derived from it is shared."""
     kept = circuit.resolved_parts
-    key = (part.name, value)
+    key = (part.name, value, tuple((factors or {}).items()))
     if key not in kept:
         if len(kept) >= _MOST_KEPT:
             kept.clear()
-        kept[key] = _electrical(part, value)
+        kept[key] = _electrical(part, value, factors)
     return kept[key]
 
 

@@ -73,8 +73,21 @@ class Deviations:
         return flat | ({TEMPERATURE: self.room_k} if self.room_k else {})
 
 
+_drawn: dict[object, Deviations] = {}  # a pack's hits share few takes
+_MOST_KEPT = 1000
+
+
 def deviations(circuit: Circuit, spread: Spread, take: int) -> Deviations:
     """The take of that number of a circuit: every spread number's factor, drawn from its own stream."""
+    key = (circuit.digest, spread.seed, *spread.tolerances.items(), spread.room_k, spread.distribution, take)
+    if key not in _drawn:
+        if len(_drawn) >= _MOST_KEPT:
+            _drawn.clear()
+        _drawn[key] = _draw(circuit, spread, take)
+    return _drawn[key]
+
+
+def _draw(circuit: Circuit, spread: Spread, take: int) -> Deviations:
     factors: dict[str, dict[str, float]] = {}
     for part in circuit.parts.values():
         for key in spread_keys(part):

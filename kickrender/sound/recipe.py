@@ -14,7 +14,8 @@ from dataclasses import asdict
 from typing import Any
 
 from kickrender.circuit import Circuit
-from kickrender.circuit.records import ResolvedCircuit
+from kickrender.circuit.records import Pulse, ResolvedCircuit
+from kickrender.circuit.strikes import ONCE
 from kickrender.engine import ENGINE_VERSION
 from kickrender.sound.level import Level
 from kickrender.sound.options import SoundOptions
@@ -28,9 +29,18 @@ def hit_recipe(
         "engine": ENGINE_VERSION,
         "circuit": circuit.digest,
         "settings": dict(resolved.settings),
+        **beyond_settings(resolved),
         "sound": asdict(options),
         "level": None if level is None or options.raw else asdict(level),
     }
+
+
+def beyond_settings(resolved: ResolvedCircuit) -> dict[str, Any]:
+    """What of a hit its settings do not say: times of further strikes, deviations of parts; often nothing."""
+    pulses = {name: wave.starts for name, wave in resolved.inputs.items() if isinstance(wave, Pulse)}
+    strikes = {name: list(starts) for name, starts in pulses.items() if starts != ONCE}
+    found = {"strikes_s": strikes, "spread": dict(resolved.spread)}
+    return {name: value for name, value in found.items() if value}
 
 
 def shared_recipe(recipe: dict[str, Any], group: Iterable[str]) -> dict[str, Any]:

@@ -18,7 +18,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from kickrender.circuit import Circuit
+from kickrender.circuit import Circuit, ResolvedCircuit
 from kickrender.engine import Solution, solve_each
 from kickrender.errors import KickrenderError, SolveError, WriteError
 from kickrender.sound.decimation import decimate, margin_s
@@ -120,7 +120,7 @@ def write_pair(path: Path, sound: Sound, facts: Mapping[str, Any]) -> None:
 
 
 def hear_each(
-    hits: Sequence[tuple[Circuit, Settings]],
+    hits: Sequence[tuple[Circuit, Settings | ResolvedCircuit]],
     options: SoundOptions,
     probes: Sequence[str] = (),
     measured: bool = True,
@@ -129,7 +129,8 @@ def hear_each(
 
     Parameters
     ----------
-    hits : sequence of (circuit, settings)
+    hits : sequence of (circuit, settings), or of (circuit, that circuit resolved)
+        The latter for what settings do not say: parts that deviate, further strikes.
     options : SoundOptions
     probes : sequence of str
         Nets to keep beside the output.
@@ -141,7 +142,7 @@ def hear_each(
     InputError
         If a setting does not suit its circuit.
     """
-    resolved = [circuit.resolve(settings) for circuit, settings in hits]
+    resolved = [wanted if isinstance(wanted, ResolvedCircuit) else circuit.resolve(wanted) for circuit, wanted in hits]
     length_s = options.longest_s + margin_s(options.rate_hz, options.oversample)
     solutions = solve_each(resolved, [length_s] * len(hits), probes=probes)
     for (circuit, _), solution in zip(hits, solutions, strict=True):

@@ -20,7 +20,15 @@ from kickrender.sound.options import SoundOptions
 
 SCHEMA = "kickrender sidecar"
 SCHEMA_VERSION = 1
-WAVE_UNITS = {"frequency": "Hz", "phase_deg": "deg", "length": "s", "rise": "s", "fall": "s", "times": "s"}
+WAVE_UNITS = {
+    "frequency": "Hz",
+    "phase_deg": "deg",
+    "length": "s",
+    "rise": "s",
+    "fall": "s",
+    "starts": "s",
+    "times": "s",
+}
 
 
 def circuit_facts(circuit: Circuit, resolved: ResolvedCircuit) -> dict[str, Any]:
@@ -29,6 +37,7 @@ def circuit_facts(circuit: Circuit, resolved: ResolvedCircuit) -> dict[str, Any]
     return {
         "circuit": {"name": circuit.name, "title": circuit.title, "digest": circuit.digest},
         "settings": {name: _value(value, unit_of(circuit, name)) for name, value in resolved.settings.items()},
+        **({"spread": dict(resolved.spread)} if resolved.spread else {}),
         "temperature": _value(resolved.temperature_k, "K"),
         "nets": {name: _value(volts, "V") for name, volts in resolved.nets.items()},
         "inputs": {name: _wave(wave) for name, wave in resolved.inputs.items()},
