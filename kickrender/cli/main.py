@@ -15,10 +15,12 @@ import click
 from kickrender import __version__
 from kickrender.cli.compare import compare
 from kickrender.cli.list_shipped import list_shipped
+from kickrender.cli.lock import lock
 from kickrender.cli.pack import pack
 from kickrender.cli.render import render
 from kickrender.cli.show import show
 from kickrender.cli.usage import Commands, fault_of
+from kickrender.cli.verify import verify
 from kickrender.errors import KickrenderError
 
 DONE, FAILED, WRONG_INPUT = 0, 1, 2
@@ -48,7 +50,7 @@ def kickrender(context: click.Context) -> None:
         click.echo(context.get_help())
 
 
-for command in (list_shipped, show, render, pack, compare):
+for command in (list_shipped, show, render, pack, compare, lock, verify):
     kickrender.add_command(command)
 
 
