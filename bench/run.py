@@ -88,16 +88,16 @@ def _solver_targets(report: Report, found: list[Comparison]) -> None:
 
 _SOLVERS = """\
 {e.length_s:g} s of sound in dense samples at {e.rate_hz:g} Hz, one core, from rest state to samples (the competitors
-are given the rest state). Every solver runs at the loosest tolerance, on a sweep by half decades from 1e-4 (the
-engine's from its default), whose residual is at -100 dB or lower: RMS difference over peak, against the engine at
-1e-10. No run may take longer than {e.limit_s:g} s. The competitors solve equations written independently of the
-engine's (those of the tests), compiled, with a compiled Jacobian, in the quickest matrix form they offer, restarted at
-every corner of the inputs. SciPy's need an invertible mass matrix, which 1 pF at massless nets gives them; they are
-measured against that circuit's own solution.
+are given the rest state). Every solver runs at the loosest tolerance, on a sweep by half decades from 1e-4, whose
+residual is at -100 dB or lower: RMS difference over peak, against the engine at 1e-10. No run may take longer than
+{e.limit_s:g} s. The competitors solve equations written independently of the engine's (those of the tests), compiled,
+with a compiled Jacobian, in the quickest matrix form they offer, restarted at every corner of the inputs. SciPy's need
+an invertible mass matrix, which 1 pF at massless nets gives them; they are measured against that circuit's own
+solution.
 
 - own: the solver is asked for every sample, the ordinary use. Left out above 60 unknowns, where it fills gigabytes.
 - joined: its bare steps, joined by a compiled cubic of ours; what its stepping alone costs.
-- side by side: per hit, 32 hits in lanes.
+- as shipped: at the default tolerance; side by side: the same per hit, 32 hits in lanes.
 - IDA tight: residual of IDA at 1e-10, which shows that the converged solution is right; 1 pF: what the masses change.
 """
 

@@ -87,34 +87,14 @@ def comparison_tables(comparisons: Sequence[Comparison]) -> str:
     head = ["circuit", "unknowns", "solver", "matrices", "tolerance", "steps", "joined [ms]", "dB", "own [ms]", "dB"]
     rows: list[Row] = []
     for c in comparisons:
-        rows.append(
-            [
-                c.case,
-                str(c.unknowns),
-                "kickrender",
-                "",
-                *_how(c.engine),
-                "",
-                "",
-                ms(c.engine.seconds),
-                db(c.engine.error_db),
-            ]
-        )
-        rows.append(["", "", "kickrender, side by side", "", "", "", "", "", ms(c.lane_s), ""])
+        lane = Match(c.lane_s, c.usual.error_db, c.usual.tolerance)
+        ours = (("kickrender", c.engine), ("  as shipped", c.usual), ("  side by side", lane))
+        for name, match in ours:
+            first = [c.case, str(c.unknowns)] if match is c.engine else ["", ""]
+            rows.append([*first, name, "", *_how(match), "", "", _time(match), db(match.error_db)])
         for e in c.entries:
-            rows.append(
-                [
-                    "",
-                    "",
-                    e.name,
-                    e.form,
-                    *_how(e.joined),
-                    _time(e.joined),
-                    db(e.joined.error_db),
-                    _time(e.own),
-                    db(e.own.error_db),
-                ]
-            )
+            cells = [cell for match in (e.joined, e.own) for cell in (_time(match), db(match.error_db))]
+            rows.append(["", "", e.name, e.form, *_how(e.joined), *cells])
     times = table(head, rows)
     rows = []
     for c in comparisons:

@@ -63,7 +63,7 @@ def test_every_solver_reaches_the_engines_solution_and_the_table_shows_it(shaper
     assert all(entry.joined.reached and entry.own.error_db < -99.0 for entry in found.entries)
     times, ratios = tables.comparison_tables([found]).split("\n\n")
     assert [row[2] for row in table_cells(times)[2:]] == [
-        *("kickrender", "kickrender, side by side"),
+        *("kickrender", "as shipped", "side by side"),
         *("IDA", "Radau", "BDF", "LSODA"),
     ]
     assert all(len(row) == 10 for row in table_cells(times))
