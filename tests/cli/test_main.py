@@ -12,6 +12,7 @@ from kickrender.cli import main as cli
 from kickrender.errors import SolveError
 from tests.cli.conftest import Run
 
+COMMANDS = ", ".join(sorted(cli.kickrender.commands))
 HEAVY = ("numba", "numpy", "scipy", "pydantic", "matplotlib", "soundfile", "jinja2")
 
 
@@ -51,7 +52,7 @@ def test_the_library_loads_nothing_heavy() -> None:
 @pytest.mark.parametrize(
     ("arguments", "message"),
     [
-        ("shw", "kickrender: unknown command 'shw'; allowed: list, pack, render, show; did you mean 'show'?"),
+        ("shw", f"kickrender: unknown command 'shw'; allowed: {COMMANDS}; did you mean 'show'?"),
         ("--jsn", "kickrender: unknown option '--jsn'; allowed: --version, -h, --help"),
         ("list --jsn", "kickrender list: unknown option '--jsn'; allowed: --json, -h, --help; did you mean '--json'?"),
         ("show", "kickrender show: CIRCUIT is missing; allowed: kickrender show [OPTIONS] CIRCUIT"),
