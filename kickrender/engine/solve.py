@@ -81,7 +81,7 @@ def solve(
     SolveError
         With the named reason, circuit, time, step, worst net and advice.
     ValueError
-        If a probe or a net of `start` is not solved for.
+        If a probe or a net of `start` is not solved for, or the length is not above 0 s and finite.
     """
     hit = _prepare(circuit, length_s, tuple(probes), start)
     outcome = _solve_batch([hit], tolerance)[0]
@@ -130,6 +130,8 @@ def rest_state(circuit: ResolvedCircuit) -> dict[str, float]:
 def _prepare(
     circuit: ResolvedCircuit, length_s: float, probes: tuple[str, ...], start: Mapping[str, float] | None = None
 ) -> _Hit:
+    if not 0.0 < length_s < np.inf:
+        raise ValueError(f"the length must be above 0 s and finite, not {length_s}")
     stamps = stamp_all(circuit)
     topology = topology_of(circuit, stamps)
     for net in (circuit.output, *probes, *(start or ())):
