@@ -22,7 +22,7 @@ from typing import Any
 TOP = Path(__file__).resolve().parent.parent
 SHORT_S = 0.1
 LOOK_EVERY_S = 0.05
-STAGES = ("solve", "decimate", "measure", "level and finish", "write")
+STAGES = ("solve", "decimate", "measure", "level and finish", "write", "manifest", "sheets")
 
 
 @dataclass(frozen=True)
@@ -131,6 +131,7 @@ def _peak_mb(process: int | None) -> float:
 def _clocks() -> dict[str, float]:
     """Put a stopwatch around each stage where a pack calls it; what they read grows as it renders. [s]"""
     from kickrender.pack import render as pack_render
+    from kickrender.pack import run as pack_run
     from kickrender.sound import render as sound_render
 
     spent = dict.fromkeys(STAGES, 0.0)
@@ -153,6 +154,8 @@ def _clocks() -> dict[str, float]:
     watch(pack_render, "gain_of", "level and finish")
     watch(pack_render, "finish", "level and finish")
     watch(pack_render, "write_hit", "write")
+    watch(pack_run, "write_manifest", "manifest")
+    watch(pack_run, "write_sheets", "sheets")
     return spent
 
 

@@ -12,7 +12,7 @@ from bench.circuits import Case, ladder_text
 from bench.compare import Effort, compare, ratio
 from bench.equations import NotCovered, compiled, with_mass
 from bench.growth import growth_with_nets
-from bench.packs import PackRun, short_hits_text
+from bench.packs import STAGES, PackRun, short_hits_text
 from bench.run import Report
 from bench.solvers import Run, competitors, run_engine
 from kickrender.circuit import read_circuit_text
@@ -134,9 +134,9 @@ def test_growth_and_aliasing_of_a_small_circuit(shaper):
 
 
 def test_pack_tables():
-    run = PackRun(10, 1, 2.0, 100.0, dict.fromkeys(("solve", "decimate", "measure", "level and finish", "write"), 0.2))
+    run = PackRun(10, 1, 2.0, 100.0, dict.fromkeys(STAGES, 0.1))
     assert table_cells(tables.pack_table([("some", run)]))[2] == ["some", "10", "1", "2.00", "5.0", "100"]
-    assert table_cells(tables.stage_table(run))[-2] == ["all else", "100", "50 %"]
+    assert table_cells(tables.stage_table(run))[-2] == ["all else", "130", "65 %"]
     assert "steps = 5" in short_hits_text("bridged-t", 50)
     assert "steps = 10" in short_hits_text("bridged-t", 50)
 
