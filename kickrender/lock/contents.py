@@ -18,6 +18,7 @@ from kickrender.engine import ENGINE_VERSION
 from kickrender.lock.records import Lock, LockedCircuit
 from kickrender.lock.text import fields_of, number_text
 from kickrender.pack.records import Hit, Plan
+from kickrender.sound.recipe import beyond_settings
 
 LIBRARIES = ("llvmlite", "numba", "numpy", "pyloudnorm", "scipy", "soundfile")  # that samples or measurements pass
 CODE_FOLDERS = ("circuit", "engine", "sound")
@@ -45,8 +46,15 @@ def path_beside(path: Path, pack: Path) -> str:
 
 
 def settings_of(plan: Plan, hit: Hit) -> dict[str, str]:
-    """Every setting of a hit, as a lock file shows it."""
-    return fields_of(plan.circuits[hit.circuit].resolve(hit.settings).settings)
+    """Every setting of a hit as a lock file shows it; further strikes and deviations of parts beside them."""
+    resolved = plan.circuits[hit.circuit].resolve(hit.settings)
+    fields = fields_of(resolved.settings)
+    for sort, found in beyond_settings(resolved).items():
+        for name, value in found.items():
+            fields[f"{sort}:{name}"] = (
+                ",".join(map(number_text, value)) if isinstance(value, list) else number_text(value)
+            )
+    return fields
 
 
 def libraries() -> dict[str, str]:

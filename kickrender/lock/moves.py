@@ -3,12 +3,14 @@
     cents        start and settled pitch                               1200 log2(after / before)
     brightness   spectral centroid, in cents too
     level        peak, true peak, momentary and integrated loudness    dB
-    time         decay, attack, length                                 ms
+    time         decay, attack                                         ms
+    length       where the sound falls below -90 dB of its peak        ms
     offset       rest level at the end                                 dB of full scale, of the difference
     null         what is left when one sound is taken from the other   dB, RMS over the RMS of the locked one
 
 The limits are common practice, no source: a tenth of what a careful ear tells apart in a direct comparison (some 10
-cents at low pitch, half a decibel, a fiftieth of a second of decay), and a residual of a thousandth.
+cents at low pitch, half a decibel, a fiftieth of a second of decay), and a residual of a thousandth. The length may
+move by more: it ends half a cycle sooner or later with the last one above -90 dB, which nobody hears.
 """
 
 from __future__ import annotations
@@ -68,7 +70,7 @@ MEASURES: Mapping[str, Measure] = MappingProxyType(
         "start_hz": Measure("start pitch", "cents", "cents", _cents, 2),
         "decay_s": Measure("decay", "ms", "time", _milliseconds, 3),
         "attack_s": Measure("attack", "ms", "time", _milliseconds, 3),
-        "length_s": Measure("length", "ms", "time", _milliseconds, 3),
+        "length_s": Measure("length", "ms", "length", _milliseconds, 3),
         "momentary_lufs": Measure("loudness", "dB", "level", _difference, 3),
         "integrated_lufs": Measure("gated loudness", "dB", "level", _difference, 3),
         "peak_dbfs": Measure("peak", "dB", "level", _difference, 3),
@@ -82,17 +84,26 @@ NULL = Measure("null residual", "dB", "null", _difference, 1)
 
 @dataclass(frozen=True)
 class Limits:
-    """Below all of these a change is called inaudible. [cent, cent, dB, ms, dBFS, dB]"""
+    """Below all of these a change is called inaudible. [cent, cent, dB, ms, ms, dBFS, dB]"""
 
     cents: float = 1.0
     brightness: float = 10.0
     level: float = 0.05
     time: float = 2.0
+    length: float = 50.0
     offset: float = -80.0
     null: float = -60.0
 
 
-LIMIT_UNITS = {"cents": "cents", "brightness": "cents", "level": "dB", "time": "ms", "offset": "dBFS", "null": "dB"}
+LIMIT_UNITS = {
+    "cents": "cents",
+    "brightness": "cents",
+    "level": "dB",
+    "time": "ms",
+    "length": "ms",
+    "offset": "dBFS",
+    "null": "dB",
+}
 
 
 @dataclass(frozen=True)

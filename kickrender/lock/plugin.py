@@ -1,12 +1,13 @@
 """A pytest plugin: `pytest --kick-lock PATH` collects one test for each hit of the lock files at PATH.
 
-pytest loads it in every run, so it imports nothing of kickrender's until the option is given. The hits of a lock file
-are verified together when the first of them is asked for; each test then tells of its own.
+pytest loads it in every run, so it imports nothing of kickrender's until the option is given. Hits are verified some
+dozens at a time, when the first of them is asked for; each test then tells of its own.
 """
 
 from __future__ import annotations
 
 from collections.abc import Iterator
+from dataclasses import replace
 from functools import cached_property
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -16,6 +17,7 @@ import pytest
 if TYPE_CHECKING:
     from kickrender.lock.records import Lock
     from kickrender.lock.verify import Verdict
+    from kickrender.pack.records import Hit, Plan
 
 ENDING = ".lock"
 START = b"kickrender lock "
@@ -35,14 +37,9 @@ def pytest_addoption(parser: pytest.Parser) -> None:
 
 
 def pytest_configure(config: pytest.Config) -> None:
-    """Ask for the lock files beside what was asked for anyway; alone when nothing else was named."""
-    files = _files(config)
-    if not files:
-        return
-    if config.args_source is not pytest.Config.ArgsSource.ARGS:
-        config.args = []
-        config.args_source = pytest.Config.ArgsSource.ARGS
-    config.args.extend(str(file) for file in files if str(file) not in config.args)
+    """Ask for the lock files beside whatever else is asked for."""
+    if config.getoption("--kick-lock"):
+        config.args.extend(str(file) for file in _files(config) if str(file) not in config.args)
 
 
 def pytest_collect_file(file_path: Path, parent: pytest.Collector) -> LockFile | None:
@@ -95,20 +92,43 @@ class LockFile(pytest.File):
         return read_lock(self.path)
 
     @cached_property
-    def plan(self) -> Any:
+    def plan(self) -> Plan:
         """The plan of the pack that the lock file names."""
         from kickrender.lock.make import plan_of
 
         return plan_of(self.locked)
 
     @cached_property
-    def verdicts(self) -> dict[str, Verdict]:
-        """Every hit's verdict, found in one go in this process."""
-        from kickrender.lock.verify import verify_plan
+    def portions(self) -> dict[str, Plan]:
+        """The part of the plan that each hit is verified with: whole groups, some dozens of hits."""
+        from kickrender.pack.batches import MOST_HITS, groups_of
+
+        portions: list[list[Hit]] = [[]]
+        for group in groups_of(self.plan.hits):
+            if len(portions[-1]) >= MOST_HITS:
+                portions.append([])
+            portions[-1].extend(group)
+        return {hit.name: replace(self.plan, hits=tuple(portion)) for portion in portions for hit in portion}
+
+    def verdict(self, name: str) -> Verdict:
+        """A hit's verdict, and with it those of the hits beside it, in this process."""
+        from kickrender.lock.verify import REMOVED, Verdict, verify_plan
         from kickrender.sound.warm_up import warm_up
 
-        warm_up()
-        return {verdict.name: verdict for verdict in verify_plan(self.plan, self.locked).verdicts}
+        if name not in self.portions:
+            return Verdict(name, REMOVED, before=self.locked.hits[name])
+        if name not in self.known:
+            warm_up()
+            portion = self.portions[name]
+            names = {hit.name for hit in portion.hits}
+            found = verify_plan(portion, self.locked).verdicts
+            self.known |= {verdict.name: verdict for verdict in found if verdict.name in names}
+        return self.known[name]
+
+    @cached_property
+    def known(self) -> dict[str, Verdict]:
+        """Verdicts found so far."""
+        return {}
 
 
 class HitMoved(Exception):
@@ -127,7 +147,7 @@ class LockedHitItem(pytest.Item):
         from kickrender.lock.verify import SAME
 
         try:
-            verdict = self.parent.verdicts[self.name]
+            verdict = self.parent.verdict(self.name)
         except KickrenderError as error:
             raise HitMoved(str(error)) from None
         tolerant = self.config.getoption("--kick-tolerance") and verdict.within

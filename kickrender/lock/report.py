@@ -144,12 +144,12 @@ def _number(value: float | None) -> str:
 
 
 def _picture(before: Path | None, after: Path | None) -> str:
-    """Waveforms, pitch tracks and what is left between them, as a data address of a PNG."""
+    """Waveforms, pitch tracks and what is left between them, each to its own scale, as a data address of a PNG."""
     from matplotlib.figure import Figure
 
     sounds = [(*_read(path), colour, label) for path, colour, label in _sides(before, after)]
     figure = Figure(figsize=(9.0, 2.6), layout="constrained")
-    wave, pitch = figure.subplots(1, 2, width_ratios=(2, 1))
+    wave, left, pitch = figure.subplots(1, 3, width_ratios=(3, 2, 2))
     for samples, rate_hz, colour, label in sounds:
         _draw_wave(wave, samples, rate_hz, colour, label)
         times, hz = pitch_track(samples, rate_hz)
@@ -157,12 +157,15 @@ def _picture(before: Path | None, after: Path | None) -> str:
     if len(sounds) == 2:
         (old, rate_hz, *_), (new, *_) = sounds
         count = max(len(old), len(new))
-        left = np.pad(new, (0, count - len(new))) - np.pad(old, (0, count - len(old)))
-        _draw_wave(wave, left, rate_hz, LEFT_COLOUR, "difference")
-    wave.set(xlabel="ms", ylabel="full scale")
+        difference = np.pad(new, (0, count - len(new))) - np.pad(old, (0, count - len(old)))
+        _draw_wave(left, difference, rate_hz, LEFT_COLOUR, "difference")
+    else:
+        left.remove()
     wave.legend(loc="upper right", fontsize="small", frameon=False)
-    pitch.set(xlabel="ms", ylabel="Hz")
-    for axes in (wave, pitch):
+    for axes, title, label in ((wave, "Sound", ""), (left, "Difference", ""), (pitch, "Pitch", "Hz")):
+        axes.set_title(title, loc="left", fontsize="small")
+        axes.set(xlabel="ms", ylabel=label)
+        axes.tick_params(labelsize="small")
         axes.spines[["top", "right"]].set_visible(False)
     file = io.BytesIO()
     figure.savefig(file, format="png", dpi=110)
