@@ -153,7 +153,7 @@ def test_too_many_steps(monkeypatch):
 def test_not_finite():
     """A source that leaves the range of numbers through a nanoohm."""
     chosen = circuit(
-        {"R": "resistor 1n in out", "C": "capacitor 1n out ground"},
+        {"R": "resistor 1e-9 in out", "C": "capacitor 1n out ground"},
         inputs={"in": 'points = [["0s", "0V"], ["1us", 1e300]]'},
     )
     with pytest.raises(
