@@ -7,7 +7,6 @@ at once, without numpy, scipy or numba.
 from __future__ import annotations
 
 import os
-import sys
 from collections.abc import Sequence
 
 import click
@@ -24,7 +23,7 @@ from kickrender.cli.verify import verify
 from kickrender.errors import KickrenderError
 
 DONE, FAILED, WRONG_INPUT = 0, 1, 2
-INTERRUPTED, PIPE_CLOSED = 130, 141  # 128 + the signal's number, as shells count
+INTERRUPTED = 130  # 128 + the signal's number, as shells count
 
 
 @click.group(
@@ -55,7 +54,9 @@ for command in (list_shipped, show, render, pack, compare, lock, verify):
 
 
 def main(arguments: Sequence[str] | None = None) -> int:
-    """Run the command line; returns the exit code (0 done, 1 failed, 2 wrong input) and never raises.
+    """Run the command line; returns the exit code (0 done, 1 failed, 2 wrong input).
+
+    A closed pipe (`| head`) ends the process quietly with 1, which click sees to.
 
     Parameters
     ----------
@@ -64,7 +65,6 @@ def main(arguments: Sequence[str] | None = None) -> int:
     """
     try:
         code = kickrender.main(arguments, prog_name="kickrender", standalone_mode=False)
-        sys.stdout.flush()
         return int(code or DONE)
     except click.UsageError as error:
         return _complain(str(fault_of(error)), WRONG_INPUT)
@@ -74,9 +74,6 @@ def main(arguments: Sequence[str] | None = None) -> int:
         return _complain(str(error), error.exit_code)
     except (KeyboardInterrupt, click.Abort):
         return _complain("stopped; every file that was written is whole", INTERRUPTED)
-    except BrokenPipeError:  # the reader of our output has gone (`| head`): nothing is left to say, nor at exit
-        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
-        return PIPE_CLOSED
     except MemoryError:
         return _complain("out of memory; try a shorter length, a lower rate or fewer jobs", FAILED)
     except OSError as error:
