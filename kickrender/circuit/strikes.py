@@ -10,7 +10,7 @@ from kickrender.circuit.records import Pulse, ResolvedCircuit
 from kickrender.circuit.values import shown
 from kickrender.errors import Fault, InputError
 
-ONCE = (0.0,)
+ONCE: tuple[float, ...] = (0.0,)
 _TIME = Quantity("s", "time of a strike", at_least=0.0, at_most=60.0)
 
 

@@ -47,7 +47,7 @@ def path_beside(path: Path, pack: Path) -> str:
 
 def settings_of(plan: Plan, hit: Hit) -> dict[str, str]:
     """Every setting of a hit as a lock file shows it; further strikes and deviations of parts beside them."""
-    resolved = plan.circuits[hit.circuit].resolve(hit.settings)
+    resolved = hit.resolved(plan.circuits[hit.circuit])
     fields = fields_of(resolved.settings)
     for sort, found in beyond_settings(resolved).items():
         for name, value in found.items():

@@ -7,137 +7,129 @@ from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
 from typing import Any
 
-from kickrender.circuit import Circuit, exact
-from kickrender.circuit.settings import unit_of
-from kickrender.circuit.values import format_value
+from kickrender.circuit import Circuit
+from kickrender.circuit.strikes import struck_at
 from kickrender.errors import Fault, InputError
-from kickrender.pack.names import Label, fill, name_faults, plain, short_labels, template_faults
-from kickrender.pack.records import CIRCUIT_AXIS, Axis, Block, Hit, Pack, Plan, Setting
+from kickrender.pack.names import Label, fill, name_faults, template_faults
+from kickrender.pack.records import (
+    CIRCUIT_AXIS,
+    LAYER_AXIS,
+    POINT_AXIS,
+    TAKE_AXIS,
+    Block,
+    Hit,
+    Pack,
+    Plan,
+    Setting,
+    resolved,
+)
+from kickrender.pack.steps import Dimension, Step, dimensions, merged
+from kickrender.pack.tuning import goal_facts, tuned
+from kickrender.sound.goals import Goal
 from kickrender.sound.recipe import dither_seed, hit_recipe, recipe_digest, shared_recipe
 
 
 @dataclass(frozen=True)
-class _Step:
-    """One value of an axis for one circuit: what is set, what is recorded, what stands in the name."""
-
-    setting: Setting
-    value: Setting
-    label: Label
-
-
-@dataclass(frozen=True)
 class _Draft:
-    """A hit before it has a name and a group."""
+    """A hit before it has a name and a group.
+
+    goals : what is still to be turned into settings, with places.
+    """
 
     circuit: str
+    block: Block
     settings: Mapping[str, Setting]
-    axes: Mapping[str, Setting]
-    labels: Mapping[str, Label]
+    goals: tuple[tuple[Goal, str], ...]
+    step: Step
     group_key: tuple[Any, ...]
+    goal_facts: Mapping[str, Mapping[str, Any]]
 
 
 def plan_pack(pack: Pack) -> Plan:
-    """Every hit of a pack, in stable order: blocks and circuits as in the file, then the axes, the last one fastest.
+    """Every hit of a pack, in stable order: blocks and circuits as in the file, then drawn points, axes, layers and
+    takes, the last one fastest.
+
+    Goals are turned into control positions here, which renders; nothing is rendered while there are other faults.
 
     Raises
     ------
     InputError
-        With every fault: unknown or unfit settings, a range no circuit knows, a template that names two hits alike or
-        climbs out of the folder.
+        With every fault: unknown or unfit settings, a range no circuit knows, strikes that overlap, a template that
+        names two hits alike or climbs out of the folder; then goals that cannot be met.
     """
     faults: list[Fault] = []
-    axis_names = list(dict.fromkeys(axis.name for block in pack.blocks for axis in block.axes))
-    faults += template_faults(pack.template, axis_names, pack.template_place)
+    faults += template_faults(pack.template, _fields(pack), pack.template_place)
     drafts: list[_Draft] = []
     for number, block in enumerate(pack.blocks):
         for name, circuit in block.circuits.items():
-            steps = _checked_steps(block, circuit, faults)
-            if steps is not None:
-                drafts.extend(_drafts(pack, block, number, name, steps))
+            before = len(faults)
+            walked = dimensions(block, circuit, faults)
+            faults += _strike_faults(pack, block, circuit)
+            if len(faults) == before:
+                drafts.extend(_drafts(pack, block, number, name, walked))
     if faults:
         raise InputError(faults)
     names = _names(pack, drafts)
+    drafts = _with_positions(pack, drafts)
     circuits = {name: circuit for block in pack.blocks for name, circuit in block.circuits.items()}
+    layered = [name for block in pack.blocks if block.layers for name in (LAYER_AXIS, *block.layers.values)]
+    together = tuple(dict.fromkeys((*pack.together, *layered))) if pack.level else pack.together
     return Plan(
         title=pack.title,
         about=pack.about,
         circuits=circuits,
         options=pack.options,
         level=pack.level,
-        together=pack.together,
+        together=together,
         hits=tuple(_hits(pack, circuits, drafts, names)),
     )
 
 
-def _checked_steps(block: Block, circuit: Circuit, faults: list[Fault]) -> dict[str, list[_Step]] | None:
-    """Each axis's steps for this circuit; None, and faults added, when a setting does not suit it.
-
-    Settings do not depend on each other, so each is tried once alone and not once per hit.
-    """
-    before = len(faults)
-    for name, raw in block.fixed.items():
-        _value(circuit, name, raw, block.fixed_places[name], faults)
-    steps = {axis.name: _steps(circuit, axis, faults) for axis in block.axes}
-    return steps if len(faults) == before else None
-
-
-def _steps(circuit: Circuit, axis: Axis, faults: list[Fault]) -> list[_Step]:
-    if axis.span is None:
-        steps = []
-        for raw in axis.values:
-            value = _value(circuit, axis.name, raw, axis.place, faults)
-            if value is not None:
-                steps.append(_Step(raw, value, Label(_text(raw), value)))
-        return steps
-    low, high, count, law = axis.span
-    first = _value(circuit, axis.name, low, axis.place, faults)
-    last = _value(circuit, axis.name, high, axis.place, faults)
-    if first is None or last is None:
-        return []
-    if law == "geometric" and not (first > 0.0 and last > 0.0):
-        faults.append(Fault(axis.place, f"a geometric range from {low} to {high}", "two values above 0"))
-        return []
-    values = [_between(float(first), float(last), index, count, law) for index in range(count)]
-    unit = unit_of(circuit, axis.name)
-    texts = [format_value(value, unit, digits=4) for value in values] if unit else short_labels(values)
-    return [_Step(value, value, Label(text, value)) for value, text in zip(values, texts, strict=True)]
+def _fields(pack: Pack) -> list[str]:
+    """Every axis that a name may tell, of any block."""
+    found: list[str] = []
+    for block in pack.blocks:
+        found += [POINT_AXIS] if block.design.draws else []
+        found += [axis.name for axis in block.axes]
+        found += [*block.layers.values, LAYER_AXIS] if block.layers else []
+        found += [TAKE_AXIS] if block.takes else []
+    return list(dict.fromkeys(found))
 
 
-def _between(first: float, last: float, index: int, count: int, law: str) -> float:
-    """The value at `index` of `count` from first to last; both ends exact, the same bits on every machine."""
-    if index in (0, count - 1):
-        return last if index else first
-    walk = index / (count - 1)
-    if law == "geometric":
-        return first * exact.power(last / first, walk)
-    return first + (last - first) * walk
-
-
-def _value(circuit: Circuit, name: str, raw: Setting, place: str, faults: list[Fault]) -> float | bool | None:
+def _strike_faults(pack: Pack, block: Block, circuit: Circuit) -> list[Fault]:
+    """Strikes that this circuit cannot have, or that come after the sound's end."""
+    longest = pack.options.longest_s
+    if block.strikes_s[-1] >= longest:
+        found = f"a strike at {block.strikes_s[-1]:g} s in a sound of at most {longest:g} s"
+        return [Fault(block.strikes_place, found, "strikes before its end, or a longer length in [sound]")]
     try:
-        return circuit.resolve({name: raw}).settings[name]
+        struck_at(circuit.resolve(), block.strikes_s, block.strikes_place)
     except InputError as error:
-        faults.extend(replace(fault, place=f"{place} (circuit '{circuit.name}')") for fault in error.faults)
-        return None
+        return list(error.faults)
+    return []
 
 
-def _text(raw: Setting) -> str:
-    if isinstance(raw, bool):
-        return "on" if raw else "off"
-    return raw.strip() if isinstance(raw, str) else plain(f"{raw:.12g}")
-
-
-def _drafts(pack: Pack, block: Block, number: int, circuit: str, steps: dict[str, list[_Step]]) -> Iterator[_Draft]:
-    for combination in itertools.product(*steps.values()):
-        chosen = dict(zip(steps, combination, strict=True))
-        apart = [(name, step.value) for name, step in chosen.items() if name not in pack.together]
-        name = block.circuits[circuit].name
+def _drafts(pack: Pack, block: Block, number: int, circuit: str, walked: Sequence[Dimension]) -> Iterator[_Draft]:
+    name = block.circuits[circuit].name
+    own = Step(axes={CIRCUIT_AXIS: name}, labels={CIRCUIT_AXIS: Label(name, name)})
+    fixed_goals = tuple((goal, block.fixed_places[kind]) for kind, goal in block.fixed_goals.items())
+    for combination in itertools.product(*(dimension.steps for dimension in walked)):
+        step = merged([own, *combination])
+        apart = [
+            (name, value)
+            for dimension, taken in zip(walked, combination, strict=True)
+            if dimension.name != LAYER_AXIS and dimension.name not in pack.together
+            for name, value in taken.axes.items()
+            if name not in pack.together
+        ]
         yield _Draft(
             circuit=circuit,
-            settings={**block.fixed, **{name: step.setting for name, step in chosen.items()}},
-            axes={CIRCUIT_AXIS: name, **{name: step.value for name, step in chosen.items()}},
-            labels={CIRCUIT_AXIS: Label(name, name), **{name: step.label for name, step in chosen.items()}},
+            block=block,
+            settings={**block.fixed, **step.settings},
+            goals=(*fixed_goals, *step.goals),
+            step=step,
             group_key=(number, None if CIRCUIT_AXIS in pack.together else circuit, *apart),
+            goal_facts={},
         )
 
 
@@ -146,7 +138,7 @@ def _names(pack: Pack, drafts: Sequence[_Draft]) -> list[str]:
     faults = []
     for number, draft in enumerate(drafts, start=1):
         try:
-            names.append(fill(pack.template, {**draft.labels, "number": Label(str(number), number)}))
+            names.append(fill(pack.template, {**draft.step.labels, "number": Label(str(number), number)}))
         except KeyError as error:
             faults.append(
                 Fault(pack.template_place, f"field {{{error.args[0]}}}, which circuit '{draft.circuit}' does not walk")
@@ -161,14 +153,36 @@ def _names(pack: Pack, drafts: Sequence[_Draft]) -> list[str]:
     return names
 
 
+def _with_positions(pack: Pack, drafts: Sequence[_Draft]) -> list[_Draft]:
+    """The drafts with control positions in place of goals."""
+    wanting = [draft for draft in drafts if draft.goals]
+    wanted = [(draft.block.circuits[draft.circuit], draft.settings, draft.goals) for draft in wanting]
+    found = iter(tuned(wanted, pack.options) if wanted else [])
+    placed = []
+    for draft in drafts:
+        if draft.goals:
+            answer = next(found)
+            facts = goal_facts(draft.goals, draft.block.circuits[draft.circuit], answer)
+            draft = replace(draft, settings={**draft.settings, **answer.settings}, goal_facts=facts)
+        placed.append(draft)
+    return placed
+
+
+def _shares(pack: Pack, block: Block) -> bool:
+    """Whether hits of the block share gains: along the axes named, and along its layers always."""
+    return pack.level is not None and bool(pack.together or block.layers)
+
+
 def _hits(pack: Pack, circuits: Mapping[str, Circuit], drafts: Sequence[_Draft], names: list[str]) -> Iterator[Hit]:
     groups: dict[tuple[Any, ...], int] = {}
     members: list[list[str]] = []
     recipes = []
     for draft in drafts:
-        circuit = circuits[draft.circuit]
-        recipe = hit_recipe(circuit, circuit.resolve(draft.settings), pack.options, pack.level)
-        key = draft.group_key if pack.together else (len(groups),)
+        circuit, block = circuits[draft.circuit], draft.block
+        spread = block.takes.spread if block.takes else None
+        struck = resolved(circuit, draft.settings, spread, draft.step.take, block.strikes_s)
+        recipe = hit_recipe(circuit, struck, pack.options, pack.level)
+        key = draft.group_key if _shares(pack, block) else (len(groups),)
         group = groups.setdefault(key, len(groups))
         if group == len(members):
             members.append([])
@@ -176,5 +190,18 @@ def _hits(pack: Pack, circuits: Mapping[str, Circuit], drafts: Sequence[_Draft],
         members[group].append(own)
         recipes.append((recipe, own, group))
     for draft, name, (recipe, own, group) in zip(drafts, names, recipes, strict=True):
-        whole = recipe_digest(shared_recipe(recipe, members[group])) if pack.together else own
-        yield Hit(name, draft.circuit, draft.settings, draft.axes, group, whole, dither_seed(own))
+        whole = recipe_digest(shared_recipe(recipe, members[group])) if _shares(pack, draft.block) else own
+        yield Hit(
+            name=name,
+            circuit=draft.circuit,
+            settings=draft.settings,
+            axes=draft.step.axes,
+            group=group,
+            recipe_digest=whole,
+            seed=dither_seed(own),
+            goals=draft.goal_facts,
+            velocity=draft.step.velocity,
+            spread=draft.block.takes.spread if draft.block.takes else None,
+            take=draft.step.take,
+            strikes_s=draft.block.strikes_s,
+        )

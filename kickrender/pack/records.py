@@ -3,45 +3,110 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from pathlib import Path
+from typing import Any, NamedTuple
 
-from kickrender.circuit import Circuit
+from kickrender.circuit import Circuit, ResolvedCircuit
+from kickrender.circuit.spread import Spread, deviations, resolve_spread
+from kickrender.circuit.strikes import ONCE, struck_at
+from kickrender.sound.goals import Goal
 from kickrender.sound.level import Level
 from kickrender.sound.options import SoundOptions
 
 Setting = float | bool | str  # a number, truth value or text such as "4.7k", as a file or a person writes it
 
+Circuits = Mapping[str, Circuit]  # name as written -> circuit, in the order of the file
+
 CIRCUIT_AXIS = "circuit"  # the axis that a list of circuits makes
+LAYER_AXIS = "layer"  # velocity layers, counted from 1, the softest first
+TAKE_AXIS = "take"  # takes, counted from 1
+POINT_AXIS = "point"  # points of a drawn design, counted from 1
+OWN_AXES = (CIRCUIT_AXIS, LAYER_AXIS, TAKE_AXIS, POINT_AXIS)
+
+
+class Span(NamedTuple):
+    """A range as written. steps : 0 in a design that draws its points."""
+
+    low: Setting
+    high: Setting
+    steps: int
+    law: str
 
 
 @dataclass(frozen=True)
 class Axis:
-    """One axis of a grid: a setting's name and the values it walks through, as written.
+    """One axis: a setting's or goal's name and the values it walks through, as written.
 
-    values : the list as written; empty for a range.
-    span : (from, to, steps, law) of a range, or None.
+    values : the list as written; empty for a range and for goals.
+    span : a range, or None.
     place : where the file says so, for faults.
+    goals : the list of goals; empty for settings and for a range.
+    way : how a goal is written ("notes", "hertz"); empty for settings.
     """
 
     name: str
     values: tuple[Setting, ...]
-    span: tuple[Setting, Setting, int, str] | None
+    span: Span | None
     place: str
+    goals: tuple[Goal, ...] = ()
+    way: str = ""
+
+
+@dataclass(frozen=True)
+class Design:
+    """How axes are combined: "grid", "zip", or drawn ("random", "latin-hypercube", "sobol") over their ranges."""
+
+    kind: str = "grid"
+    count: int = 0
+    seed: int = 0
+    place: str = ""
+
+    @property
+    def draws(self) -> bool:
+        """Whether ranges are drawn from, not walked through."""
+        return self.kind not in ("grid", "zip")
+
+
+@dataclass(frozen=True)
+class Layers:
+    """Velocity layers, the softest first: setting -> its value in each layer, as written; they share one gain."""
+
+    values: Mapping[str, tuple[Setting, ...]]
+    places: Mapping[str, str]
+
+    @property
+    def count(self) -> int:
+        """How many layers there are."""
+        return len(next(iter(self.values.values())))
+
+
+@dataclass(frozen=True)
+class Takes:
+    """Takes of every hit, each of parts that deviate anew."""
+
+    count: int
+    spread: Spread
 
 
 @dataclass(frozen=True)
 class Block:
-    """One grid: every circuit with every combination of axis values.
+    """One design: every circuit with every combination of axis values, layer and take.
 
-    circuits : name as written -> circuit, in the order of the file.
-    fixed : settings that every hit of the block has; `fixed_places` is where each stands, for faults.
+    fixed, fixed_goals : settings and goals of every hit of the block; `fixed_places` is where each stands, for faults.
+    strikes_s : when every pulse starts; `strikes_place` is where that stands. [s]
     """
 
-    circuits: Mapping[str, Circuit]
+    circuits: Circuits
     axes: tuple[Axis, ...]
     fixed: Mapping[str, Setting]
     fixed_places: Mapping[str, str]
+    fixed_goals: Mapping[str, Goal] = field(default_factory=dict)
+    design: Design = Design()
+    layers: Layers | None = None
+    takes: Takes | None = None
+    strikes_s: tuple[float, ...] = ONCE
+    strikes_place: str = ""
 
 
 @dataclass(frozen=True)
@@ -76,6 +141,10 @@ class Hit:
     group : number of the group of hits that share one gain.
     recipe_digest : of everything this hit's file depends on, its group included.
     seed : for the dither; depends on the hit alone.
+    goals : what was asked for by ear -> the facts of it: see the sidecar's schema.
+    velocity : lowest and highest key velocity of the hit's layer, 0 to 127.
+    spread, take : tolerances of the hit's parts, and which take this is.
+    strikes_s : when every pulse starts. [s]
     """
 
     name: str
@@ -85,6 +154,24 @@ class Hit:
     group: int
     recipe_digest: str
     seed: int
+    goals: Mapping[str, Mapping[str, Any]] = field(default_factory=dict)
+    velocity: tuple[int, int] | None = None
+    spread: Spread | None = None
+    take: int = 0
+    strikes_s: tuple[float, ...] = ONCE
+
+    def resolved(self, circuit: Circuit) -> ResolvedCircuit:
+        """The hit's circuit as it is struck."""
+        return resolved(circuit, self.settings, self.spread, self.take, self.strikes_s)
+
+
+def resolved(
+    circuit: Circuit, settings: Mapping[str, Setting], spread: Spread | None, take: int, strikes_s: tuple[float, ...]
+) -> ResolvedCircuit:
+    """A circuit under settings, of parts that deviate as in this take, struck at these times."""
+    if spread is None:
+        return struck_at(circuit.resolve(settings), strikes_s)
+    return struck_at(resolve_spread(circuit, settings, deviations(circuit, spread, take)), strikes_s)
 
 
 @dataclass(frozen=True)

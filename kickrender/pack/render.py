@@ -88,8 +88,8 @@ def gain_of(measurements: list[Measurements], level: Level | None) -> Gain:
 def heard(batch: Batch, measured: bool = True) -> Iterator[tuple[Hit, Take | KickrenderError]]:
     """Every hit's take or the reason there is none, in the order of its groups."""
     hits = [hit for group in groups_of(batch.hits) for hit in group]
-    settings = [(batch.circuits[hit.circuit], hit.settings) for hit in hits]
-    yield from zip(hits, hear_each(settings, batch.options, measured=measured), strict=True)
+    struck = [(batch.circuits[hit.circuit], hit.resolved(batch.circuits[hit.circuit])) for hit in hits]
+    yield from zip(hits, hear_each(struck, batch.options, measured=measured), strict=True)
 
 
 def _written(batch: Batch, hit: Hit, sound: Sound | KickrenderError) -> Outcome:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from pathlib import Path
 from typing import Any
 
@@ -43,12 +44,7 @@ def sidecar_of(batch: Batch, hit: Hit, sound: Sound) -> dict[str, Any]:
     """What the sidecar says: the sound's facts, and which hit of which pack it is."""
     return {
         **sound.facts,
-        "pack": {
-            "title": batch.title,
-            "name": hit.name,
-            "axes": dict(hit.axes),
-            "shares_gain_along": list(batch.together),
-        },
+        "pack": _place(batch.title, batch.together, hit),
         "recipe_digest": hit.recipe_digest,
     }
 
@@ -58,7 +54,23 @@ def is_done(plan: Plan, folder: Path, hit: Hit) -> bool:
     facts = read_sidecar(json_path(folder, hit.name))
     if facts is None or facts.get("recipe_digest") != hit.recipe_digest:
         return False
-    place = {"title": plan.title, "name": hit.name, "axes": dict(hit.axes), "shares_gain_along": list(plan.together)}
-    if facts.get("pack") != place:
+    if facts.get("pack") != _place(plan.title, plan.together, hit):
         return False
     return pcm_digest_of_file(wav_path(folder, hit.name)) == facts.get("pcm", {}).get("sha256")
+
+
+def _place(title: str, together: Sequence[str], hit: Hit) -> dict[str, Any]:
+    """Which hit of a pack this is, as a sidecar says it."""
+    place: dict[str, Any] = {
+        "title": title,
+        "name": hit.name,
+        "axes": dict(hit.axes),
+        "shares_gain_along": list(together),
+    }
+    if hit.goals:
+        place["goals"] = {kind: dict(facts) for kind, facts in hit.goals.items()}
+    if hit.velocity:
+        place["velocity"] = {"low": hit.velocity[0], "high": hit.velocity[1]}
+    if hit.spread:
+        place["take_seed"] = hit.spread.seed
+    return place

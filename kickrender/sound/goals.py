@@ -135,13 +135,28 @@ def note_hz(name: object, concert_pitch_hz: float = CONCERT_PITCH_HZ, place: str
     InputError
         If there is no note of that name, with the nearest that there is.
     """
-    match = _NOTE.fullmatch(name.strip()) if isinstance(name, str) else None
-    if match is None:
+    number = _number(name)
+    if number is None:
         found = f"no note {shown(name)}" if isinstance(name, str) else f"{shown(name)} is not a note"
         raise InputError(Fault(place, found, "a note such as 'F1', 'F#1' or 'Bb1'", _nearest_note_name(name)))
-    letter, accidental, octave = match.groups()
-    number = 12 * (int(octave) + 1) + _STEPS[letter] + {"": 0, "#": 1, "b": -1}[accidental]
     return concert_pitch_hz * exact.power(2.0, (number - A4_NUMBER) / 12.0)
+
+
+def notes_between(low: str, high: str) -> list[str]:
+    """Every note from one to another, both included, a semitone apart, with sharps; empty when `low` lies above."""
+    first, last = _number(low), _number(high)
+    if first is None or last is None:
+        return []
+    return [f"{NOTE_NAMES[number % 12]}{number // 12 - 1}" for number in range(first, last + 1)]
+
+
+def _number(name: object) -> int | None:
+    """The number of a note, C4 being 60; None when there is no such note."""
+    match = _NOTE.fullmatch(name.strip()) if isinstance(name, str) else None
+    if match is None:
+        return None
+    letter, accidental, octave = match.groups()
+    return 12 * (int(octave) + 1) + _STEPS[letter] + {"": 0, "#": 1, "b": -1}[accidental]
 
 
 def _nearest_note_name(name: object) -> str | None:

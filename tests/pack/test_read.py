@@ -57,8 +57,8 @@ def test_blocks_add_to_and_replace_what_the_file_says(folder: Path) -> None:
 @pytest.mark.parametrize(
     ("old", "new", "faults"),
     [
-        ("[axes]", "[axis]", ["p.toml:12, axis: unknown key 'axis'; allowed: title, about, circuit, sound, level, "
-                              "axes, fixed, files, blocks; did you mean 'axes'?",
+        ("[axes]", "[axis]", ["p.toml:12, axis: unknown key 'axis'; allowed: title, about, sound, level, files, "
+                              "circuit, axes, fixed, design, layers, takes, hits, blocks; did you mean 'axes'?",
                               "p.toml:11, level.together: no axis 'accent'; allowed: circuit"]),
         ('title = "Plain pack"', "", ["p.toml, title: key 'title' is missing; allowed: a text in quotes"]),
         ('"voice.toml"', '"voic.toml"', ["FOLDER/voic.toml: cannot read FOLDER/voic.toml: No such file or directory; "
@@ -110,7 +110,8 @@ def test_a_fault_in_a_block_names_its_line(folder: Path) -> None:
     text = PACK + "[[blocks]]\n[[blocks]]\naxis = 3\n"
     line = text.splitlines().index("axis = 3") + 1
     assert faults_of(text, folder) == [
-        f"p.toml:{line}, blocks.1.axis: unknown key 'axis'; allowed: circuit, axes, fixed; did you mean 'axes'?"
+        f"p.toml:{line}, blocks.1.axis: unknown key 'axis'; allowed: circuit, axes, fixed, design, layers, takes, hits; "
+        "did you mean 'axes'?"
     ]
 
 
