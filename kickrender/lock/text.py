@@ -158,7 +158,7 @@ class _Reader:
 
     def lock(self) -> Lock:
         self.check_version()
-        body = self.checked_body()
+        body, end = self.body()
         block: Callable[[_Read], None] | None = None
         for number, text in enumerate(body[1:], start=2):
             if text.strip() and (line := self.split(number, text)):
@@ -167,6 +167,9 @@ class _Reader:
             if name not in self.headers and not self.faults:
                 self.fault(1, f"no line '{name}'", AGAIN)
         hits = {name: hit for name, draft in self.hits.items() if (hit := self.hit(draft))}
+        digest = hashlib.sha256("".join(f"{line}\n" for line in body).encode()).hexdigest()
+        if end.fields.get("sha256") != digest:
+            self.fault(end.number, "the lines above are not those that were locked (their digest differs)", AGAIN)
         if self.faults:
             raise InputError(self.faults)
         headers = {name: line.fields for name, line in self.headers.items()}
@@ -194,18 +197,14 @@ class _Reader:
         if self.faults:
             raise InputError(self.faults)
 
-    def checked_body(self) -> list[str]:
-        """The lines before the last, whose digest the last one holds."""
+    def body(self) -> tuple[list[str], _Read]:
+        """The lines before the last, and the last, which holds their digest."""
         lines = self.lines[:-1] if self.lines[-1] == "" else self.lines
         last = self.split(len(lines), lines[-1])
         if last is None or last.keyword != "end":
             self.fault(len(lines), "the file ends before its line 'end': it is cut short", AGAIN)
             raise InputError(self.faults)
-        body = lines[:-1]
-        digest = hashlib.sha256("".join(f"{line}\n" for line in body).encode()).hexdigest()
-        if last.fields.get("sha256") != digest:
-            self.fault(last.number, "the lines above are not those that were locked (their digest differs)", AGAIN)
-        return body
+        return lines[:-1], last
 
     def take(self, line: _Read, block: Callable[[_Read], None] | None) -> Callable[[_Read], None] | None:
         """Take one line in; returns who takes the indented lines that follow."""
