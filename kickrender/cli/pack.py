@@ -5,12 +5,18 @@ from __future__ import annotations
 import os
 import sys
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 import click
 
 from kickrender.cli.settings import note
 from kickrender.cli.solver import ready_solver
 from kickrender.errors import Fault, InputError, KickrenderError
+
+if TYPE_CHECKING:
+    from kickrender.pack.records import Plan
+
+MOST_NAMES = 20  # told by a dry run
 
 
 @click.command()
@@ -20,7 +26,7 @@ from kickrender.errors import Fault, InputError, KickrenderError
 @click.option(
     "--only", type=click.Path(path_type=Path), metavar="FILE", help="Render the hits named in this list alone."
 )
-@click.option("--dry-run", is_flag=True, help="Check everything and name every hit; render nothing.")
+@click.option("--dry-run", is_flag=True, help="Check everything; tell the number of hits, time, room and first names.")
 def pack(pack: str, out: Path | None, jobs: str | None, only: Path | None, dry_run: bool) -> None:
     """Render every hit of PACK: one WAV and one sidecar each; pack.json, pack.csv and pack.png over all; and a
     listening sheet, index.html, to hear, sort and choose hits in a browser.
@@ -41,15 +47,16 @@ def pack(pack: str, out: Path | None, jobs: str | None, only: Path | None, dry_r
     from kickrender.pack.plan import plan_pack
     from kickrender.pack.read import read_pack
 
-    plan = plan_pack(read_pack(pack))
+    read = read_pack(pack)
+    if any(block.asks_for_goals for block in read.blocks):
+        ready_solver()
+    plan = plan_pack(read)
     if only is not None:
         from kickrender.pack.only import keep_only, read_names
 
         plan = keep_only(plan, read_names(only), str(only))
     if out is None or dry_run:
-        click.echo(f"{plan.title}: {len(plan.hits)} hits")
-        for hit in plan.hits:
-            click.echo(f"  {hit.name}.wav")
+        _foretell(plan, workers)
         return
     from kickrender.pack.run import render_plan
 
@@ -65,6 +72,18 @@ def pack(pack: str, out: Path | None, jobs: str | None, only: Path | None, dry_r
     click.echo(f"{out}: {len(result.rendered) + len(result.kept)} hits, {len(result.rendered)} of them rendered now")
     if result.failed:
         raise HitsFailed("\n".join(f"{name}: {reason}" for name, reason in result.failed.items()))
+
+
+def _foretell(plan: Plan, workers: int) -> None:
+    """What a run would do: how many hits, at what cost, and the first of their names."""
+    from kickrender.pack.estimate import estimate
+
+    ready_solver()
+    click.echo(f"{plan.title}: {len(plan.hits)} hits, {estimate(plan, plan.hits, workers)}")
+    for hit in plan.hits[:MOST_NAMES]:
+        click.echo(f"  {hit.name}.wav")
+    if len(plan.hits) > MOST_NAMES:
+        click.echo(f"  and {len(plan.hits) - MOST_NAMES} more")
 
 
 class HitsFailed(KickrenderError):

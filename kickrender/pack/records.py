@@ -108,6 +108,11 @@ class Block:
     strikes_s: tuple[float, ...] = ONCE
     strikes_place: str = ""
 
+    @property
+    def asks_for_goals(self) -> bool:
+        """Whether planning the block has to render."""
+        return bool(self.fixed_goals) or any(axis.way for axis in self.axes)
+
 
 @dataclass(frozen=True)
 class Pack:

@@ -10,6 +10,7 @@ from pathlib import Path
 
 from kickrender.errors import MeasurementError, WriteError
 from kickrender.pack.batches import MOST_HITS, batches_of, groups_of
+from kickrender.pack.estimate import check_room
 from kickrender.pack.manifest import remove_manifest, stale_names, write_manifest
 from kickrender.pack.records import Hit, Plan
 from kickrender.pack.render import Outcome, gain_of, measure_batch, render_batch
@@ -61,14 +62,17 @@ def render_plan(plan: Plan, folder: Path, jobs: int = 1, progress: Progress = la
 
     Raises
     ------
+    InputError
+        If the disk has no room for it; nothing is begun.
     WriteError
         If the folder cannot be written; what was written is whole.
     WorkerError
         If a worker process died.
     """
+    missing = missing_hits(plan, folder)
+    check_room(plan, folder, missing)
     _open_folder(folder)
     sheet_of(folder)  # somebody else's index.html is told of now, not after the rendering
-    missing = missing_hits(plan, folder)
     kept = {hit.name for hit in plan.hits} - {hit.name for hit in missing}
     stale = stale_names(plan, folder)
     progress(len(kept))
