@@ -160,7 +160,7 @@ def _picture(before: Path | None, after: Path | None) -> str:
         difference = np.pad(new, (0, count - len(new))) - np.pad(old, (0, count - len(old)))
         _draw_wave(left, difference, rate_hz, LEFT_COLOUR, "difference")
     else:
-        left.remove()
+        left.set_visible(False)
     wave.legend(loc="upper right", fontsize="small", frameon=False)
     for axes, title, label in ((wave, "Sound", ""), (left, "Difference", ""), (pitch, "Pitch", "Hz")):
         axes.set_title(title, loc="left", fontsize="small")

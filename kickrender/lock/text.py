@@ -121,6 +121,11 @@ def read_lock(path: Path) -> Lock:
     except UnicodeDecodeError as error:
         line = error.object.count(b"\n", 0, error.start) + 1
         raise InputError(Fault(f"{path}:{line}", "is not UTF-8 text", AGAIN)) from None
+    return read_lock_text(text, path)
+
+
+def read_lock_text(text: str, path: Path) -> Lock:
+    """The lock of a text, as if it stood in the file at `path`; see `read_lock`."""
     return _Reader(text, path).lock()
 
 
