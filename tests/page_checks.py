@@ -8,15 +8,19 @@ from axe_selenium_python import Axe
 from selenium.webdriver import Chrome
 
 
+def resize(chrome: Chrome, width: int = 1400) -> None:
+    chrome.execute_cdp_cmd(
+        "Emulation.setDeviceMetricsOverride",
+        {"width": width, "height": 900, "deviceScaleFactor": 1, "mobile": width < 600},
+    )
+
+
 def accessibility_faults(chrome: Chrome, path: Path | None, width: int, scheme: str) -> list[str]:
     """What axe-core finds wrong with a page, all of it unfolded, and whether it is wider than the window.
 
     path : the page to open, or None for what is open.
     """
-    chrome.execute_cdp_cmd(
-        "Emulation.setDeviceMetricsOverride",
-        {"width": width, "height": 800, "deviceScaleFactor": 1, "mobile": width < 600},
-    )
+    resize(chrome, width)
     chrome.execute_cdp_cmd(
         "Emulation.setEmulatedMedia", {"features": [{"name": "prefers-color-scheme", "value": scheme}]}
     )

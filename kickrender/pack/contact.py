@@ -73,15 +73,16 @@ def contact_sheet(manifest: Mapping[str, Any], thumbnails: Sequence[Thumbnail], 
 def cells_across(settings: Sequence[Mapping[str, Any]]) -> int:
     """How many cells stand side by side, for hits with these axis values in order.
 
-    Whole turns of the fastest axes, as many as bring the grid nearest to a page; for no full grid, a near square.
+    Whole turns of the fastest axes, as many as bring the grid nearest to a page; for no full grid, or a long and narrow one, just a page.
     """
     count = len(settings)
     ideal = max(1.0, math.sqrt(count * CELL_INCHES[1] / CELL_INCHES[0] * 1.2))
     sizes = [len({axes.get(name) for axes in settings}) for name in (settings[0] if settings else {})]
     if math.prod(sizes) == count:
         turns = [math.prod(sizes[k:]) for k in range(len(sizes) + 1)]
-        fitting = [n for n in turns if n <= MOST_CELLS_ACROSS] or [1]
-        return min(fitting, key=lambda n: abs(math.log(n / ideal)))
+        nearest = min(turns, key=lambda n: abs(math.log(n / ideal)))
+        if ideal / 3 <= nearest <= min(3 * ideal, MOST_CELLS_ACROSS):
+            return nearest
     return max(1, min(count, MOST_CELLS_ACROSS, round(ideal)))
 
 

@@ -161,7 +161,7 @@
       const button = make("button", { type: "button", textContent: column.label });
       button.addEventListener("click", () => sort(column.key, sortedBy === column.key && !descending));
       const th = make("th", {}, button);
-      if (column.unit) th.append(make("small", { textContent: column.unit }));
+      if (column.unit) th.append(" ", make("small", { textContent: column.unit }));
       if (sortedBy === column.key) th.setAttribute("aria-sort", descending ? "descending" : "ascending");
       add(th, column.words);
       if (column.key === "name") add(make("th", { textContent: "Shape, pitch" }), true);
@@ -250,11 +250,14 @@
   const draw = () => {
     const style = getComputedStyle(document.documentElement);
     const [shape, line, warm] = ["--shape", "--line", "--warm"].map((name) => style.getPropertyValue(name));
-    for (const tr of at("hits").tBodies[0].rows) drawOne(tr.querySelector("canvas"), Number(tr.dataset.hit), shape, line, warm);
+    const canvases = [...at("hits").tBodies[0].querySelectorAll("canvas")];
+    if (!canvases.length) return;
+    // One size for all, read once: to ask each after changing the one before would lay the page out every time.
+    const { clientWidth: width, clientHeight: height } = canvases[0];
+    for (const canvas of canvases) drawOne(canvas, Number(canvas.closest("tr").dataset.hit), width, height, shape, line, warm);
   };
-  const drawOne = (canvas, hit, shape, line, warm) => {
+  const drawOne = (canvas, hit, width, height, shape, line, warm) => {
     const scale = window.devicePixelRatio || 1;
-    const width = canvas.clientWidth, height = canvas.clientHeight;
     canvas.width = Math.round(width * scale);
     canvas.height = Math.round(height * scale);
     const pen = canvas.getContext("2d");
@@ -297,8 +300,9 @@
     const current = listed[place];
     const words = at("words").value.toLowerCase().split(/\s+/).filter(Boolean);
     const only = at("starred-only").checked;
+    const chosen = [...filters.values()];
     const fits = (i) => (!only || starred.has(i)) && words.every((word) => haystacks[i].includes(word))
-      && [...filters.values()].every((filter) => filter(i));
+      && chosen.every((filter) => filter(i));
     const key = byKey.get(sortedBy).sort;
     const sign = descending ? -1 : 1;
     listed = data.names.map((_, i) => i).filter(fits).sort((a, b) => {
