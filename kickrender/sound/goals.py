@@ -165,8 +165,12 @@ def _nearest_note_name(name: object) -> str | None:
     text = name.strip()[:1].upper() + name.strip()[1:].lower()
     if _NOTE.fullmatch(text):
         return text
+    if _NOTE.fullmatch(f"{text}1"):
+        return f"{text}1"
     flats = ("Db", "Eb", "Gb", "Ab", "Bb")
     known = [f"{note}{octave}" for octave in range(10) for note in (*NOTE_NAMES, *flats)]
+    if swapped := [note for note in known if sorted(note) == sorted(text)]:
+        return swapped[0]
     # Names are so short that one wrong letter of two must still count as near.
     matches = difflib.get_close_matches(text, known, n=1, cutoff=0.5)
     return matches[0] if matches else None

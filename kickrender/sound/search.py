@@ -50,9 +50,9 @@ class Survey:
             columns.append([(high - low) / (above[k] - below[k]) for low, high in pair])
         return [list(row) for row in zip(*columns, strict=True)]
 
-    def start(self, wanted: Sequence[float]) -> tuple[Walk, Slopes] | None:
-        """Where to measure first, and slopes there: from the point whose Newton step is the shortest."""
-        best: tuple[float, Walk, Slopes] | None = None
+    def start(self, wanted: Sequence[float]) -> tuple[Walk, Walk, Slopes] | None:
+        """The point whose Newton step is the shortest, where that step leads, and the slopes it trusts."""
+        best: tuple[float, Walk, Walk, Slopes] | None = None
         for walk, slopes in self.slopes.items():
             errors = [value - wish for value, wish in zip(self.values[walk], wanted, strict=True)]
             step = newton_step(walk, errors, slopes)
@@ -62,7 +62,7 @@ class Survey:
             left = [error + _dot(row, step) for error, row in zip(errors, slopes, strict=True)]
             length = max(map(abs, step)) + (1.0 if _worst(left) > 1.0 else 0.0)
             if best is None or length < best[0]:
-                best = length, _moved(walk, step, LONGEST_STEP), slopes
+                best = length, walk, _moved(walk, step, LONGEST_STEP), slopes
         return best and best[1:]
 
 
@@ -73,6 +73,8 @@ class Search:
         self.wanted = tuple(wanted)
         self.next: Walk | None = None
         self.best: Walk | None = None
+        self._origin: Walk = ()
+        self._last: Walk = ()
         self._errors: list[float] = []
         self._slopes: Slopes = []
         self._radius = LONGEST_STEP
@@ -82,7 +84,8 @@ class Search:
         """Start, or start again, from a survey."""
         start = survey.start(self.wanted)
         if start is not None:
-            self.next, self._slopes = start[0], [list(row) for row in start[1]]
+            self._origin, self.next, slopes = start
+            self._slopes = [list(row) for row in slopes]
             self.best, self._radius, self._tried = None, LONGEST_STEP, set()
 
     @property
@@ -99,6 +102,7 @@ class Search:
         walk = self.next
         assert walk is not None
         self._tried.add(walk)
+        self._last = walk
         if values is None:
             self._shorten(walk)
         else:
@@ -113,12 +117,16 @@ class Search:
         self.next = self._ask()
 
     def _ask(self) -> Walk | None:
-        if self.best is None or self.error <= AIM or len(self._tried) >= MOST_ROUNDS:
+        if self.error <= AIM or len(self._tried) >= MOST_ROUNDS:
             return None
-        step = newton_step(self.best, self._errors, self._slopes)
-        if step is None:
-            return None
-        walk = _moved(self.best, step, self._radius)
+        if self.best is None:  # nothing to measure at the first point: back towards where there was something
+            back = [origin - last for origin, last in zip(self._origin, self._last, strict=True)]
+            walk = _moved(self._last, [way / 2.0 for way in back], 1.0)
+        else:
+            step = newton_step(self.best, self._errors, self._slopes)
+            if step is None:
+                return None
+            walk = _moved(self.best, step, self._radius)
         return None if walk in self._tried else walk
 
     def _left(self, walk: Walk, errors: Sequence[float]) -> float:
