@@ -5,12 +5,15 @@ from __future__ import annotations
 import sys
 from collections.abc import Callable
 from pathlib import Path
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import click
 
 from kickrender.cli.pack import cores, read_jobs
 from kickrender.cli.solver import ready_solver
+
+if TYPE_CHECKING:
+    from kickrender.pack.records import Pack, Plan
 
 lock_option: Callable[[Any], Any] = click.option(
     "--lock",
@@ -39,11 +42,8 @@ def lock(pack: str, lock_file: Path | None, audio: bool, jobs: str | None) -> No
     """
     workers = cores() if jobs is None else read_jobs(jobs)
     from kickrender.lock.make import check_target, lock_path, pack_name, write_lock
-    from kickrender.pack.plan import plan_pack
-    from kickrender.pack.read import read_pack
 
-    read = read_pack(pack)
-    plan = plan_pack(read)
+    read, plan = read_plan(pack)
     path = lock_file or lock_path(read, pack)
     check_target(path)
     ready_solver()
@@ -53,3 +53,14 @@ def lock(pack: str, lock_file: Path | None, audio: bool, jobs: str | None) -> No
         name = pack_name(read, pack, path)
         made = write_lock(plan, path, name, audio=audio, jobs=workers, progress=bar.update)
     click.echo(f"{path}: {len(made.hits)} hits locked" + (f", renders kept in {made.audio_folder}" if audio else ""))
+
+
+def read_plan(pack: str) -> tuple[Pack, Plan]:
+    """A pack and its plan; the solver is made ready first where goals have to be found by rendering."""
+    from kickrender.pack.plan import plan_pack
+    from kickrender.pack.read import read_pack
+
+    read = read_pack(pack)
+    if any(block.asks_for_goals for block in read.blocks):
+        ready_solver()
+    return read, plan_pack(read)

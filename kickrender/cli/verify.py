@@ -7,7 +7,7 @@ from pathlib import Path
 
 import click
 
-from kickrender.cli.lock import lock_option
+from kickrender.cli.lock import lock_option, read_plan
 from kickrender.cli.pack import cores, read_jobs
 from kickrender.cli.settings import json_option, print_json
 from kickrender.cli.solver import ready_solver
@@ -56,12 +56,9 @@ def verify(
     from kickrender.lock.make import lock_path
     from kickrender.lock.moves import read_limits
     from kickrender.lock.text import read_lock
-    from kickrender.pack.plan import plan_pack
-    from kickrender.pack.read import read_pack
 
     chosen = read_limits(_pairs(limits), "--limit")
-    read = read_pack(pack)
-    plan = plan_pack(read)
+    read, plan = read_plan(pack)
     path = lock_file or lock_path(read, pack)
     if not path.exists():
         raise InputError(

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 
 import numpy as np
@@ -30,7 +30,7 @@ FEWEST_PER_WORKER = 32  # loading the solver takes a worker about as long as ren
 class Job:
     """A batch of hits, and what is known of them.
 
-    settings : hit -> its settings as a lock file shows them.
+    settings : hit -> its settings as a lock file shows them; for hits that are rendered whole.
     locked : hit -> what was locked of it, where it was.
     places : hit -> where the lock file says so.
     audio, audio_format : folder of the renders kept when they were locked, or None, and their sample format.
@@ -96,26 +96,23 @@ def render_hits(
     """
     jobs = _workers(groups, jobs)
     gains = measured_gains(plan, Path(), [g for g in groups if len(g) > MOST_HITS], jobs) if plan.together else {}
-    work = (_job(plan, lock, batch, keep, keep_moved) for batch in batches_of(plan, Path(), groups, jobs, gains))
-    return run_batches(work, render_batch, jobs, progress)
+
+    def work() -> Iterator[Job]:
+        for batch in batches_of(plan, Path(), groups, jobs, gains):
+            settings = {hit.name: settings_of(plan, hit) for hit in batch.hits}
+            yield replace(_job(plan, lock, batch), settings=settings, keep=keep, keep_moved=keep_moved)
+
+    return run_batches(work(), render_batch, jobs, progress)
 
 
 def _workers(groups: Sequence[tuple[Hit, ...]], jobs: int) -> int:
     return max(1, min(jobs, sum(map(len, groups)) // FEWEST_PER_WORKER))
 
 
-def _job(plan: Plan, lock: Lock, batch: Batch, keep: Path | None = None, keep_moved: bool = False) -> Job:
+def _job(plan: Plan, lock: Lock, batch: Batch) -> Job:
     locked = {hit.name: lock.hits[hit.name] for hit in batch.hits if hit.name in lock.hits}
-    return Job(
-        batch=batch,
-        settings={hit.name: settings_of(plan, hit) for hit in batch.hits},
-        locked=locked,
-        places={name: lock.place(name) for name in locked},
-        audio=lock.audio_folder,
-        audio_format=lock.sound["format"],
-        keep=keep,
-        keep_moved=keep_moved,
-    )
+    places = {name: lock.place(name) for name in locked}
+    return Job(batch, locked=locked, places=places, audio=lock.audio_folder, audio_format=lock.sound["format"])
 
 
 def hash_batch(job: Job, stop: Stop) -> Iterator[Found]:
