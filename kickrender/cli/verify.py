@@ -23,7 +23,7 @@ from kickrender.errors import Fault, InputError
     "limits",
     metavar="NAME=VALUE",
     multiple=True,
-    help="A limit of the inaudible: cents, brightness (cents), level (dB), time, length (ms), offset (dBFS), null (dB).",
+    help="A limit of the inaudible: cents, brightness (cents), level, null (dB), time, length (ms), offset (dBFS).",
 )
 @click.option("--jobs", metavar="N", help="Worker processes.  [default: one per core]")
 @json_option
