@@ -29,11 +29,26 @@ _IMPORT = re.compile(r"^ *from (kickrender[\w.]*) import (\([^)]*\)|[^\n#]+)", r
 
 def kernel(function: Callable[..., Any]) -> Callable[..., Any]:
     """Compile `function` to machine code on first use, kept on disk under the digest of the kernel sources."""
+    return _compiled(function, called_from_python=True)
+
+
+def inner_kernel(function: Callable[..., Any]) -> Callable[..., Any]:
+    """Like `kernel`, for functions that only other kernels call: without the door to Python they compile quicker."""
+    return _compiled(function, called_from_python=False)
+
+
+def _compiled(function: Callable[..., Any], called_from_python: bool) -> Callable[..., Any]:
     folder = cache_folder(Path(function.__code__.co_filename))
     before = config.CACHE_DIR
     config.CACHE_DIR = str(folder)  # numba reads it when the function is decorated
     try:
-        return numba.njit(cache=True, nogil=True, error_model="numpy")(function)
+        return numba.njit(
+            cache=True,
+            nogil=True,
+            error_model="numpy",
+            no_cpython_wrapper=not called_from_python,
+            no_cfunc_wrapper=True,
+        )(function)
     finally:
         config.CACHE_DIR = before
 

@@ -8,7 +8,7 @@ import numpy as np
 
 from kickrender.circuit.records import GROUND, ResolvedCircuit
 from kickrender.engine.equations import matrix_at
-from kickrender.engine.lanes import FLAT, PADDING
+from kickrender.engine.lanes import FLAT, LONE, PADDING
 from kickrender.engine.plan import Plan
 from kickrender.engine.program import build_program
 from kickrender.engine.topology import numbers_of, stamp_all, topology_of
@@ -35,7 +35,7 @@ def terminal_currents(circuit: ResolvedCircuit, state: Mapping[str, float]) -> d
     vectors[code.stride + code.inputs :][: code.known - code.inputs] = layout[code.n_held :]
     volts = np.array([state[name] for name in topology.inputs])
     at_rest = np.zeros(1), volts, np.zeros(code.inputs), np.zeros(3 * code.inputs)
-    matrix_at(code, np.append(layout, np.zeros(PADDING)), coefficients, vectors, 0.0, *at_rest)
+    matrix_at(code, np.append(layout, np.zeros(PADDING)), coefficients, vectors, 0.0, *at_rest, LONE)
     first_output = dict(zip(topology.device_order, _starts(topology.devices, code.v_outputs), strict=True))
     value = {**state, GROUND: 0.0}
     currents: dict[str, dict[str, float]] = {}

@@ -7,7 +7,7 @@ range stated (tested against mpmath).
 
 from __future__ import annotations
 
-from kickrender.engine.compile import kernel
+from kickrender.engine.compile import inner_kernel, kernel
 from kickrender.engine.lanes import any_less, exponent, load, mantissa, pick_less, power_of_two, store
 
 _ROUND = 6755399441055744.0  # 1.5 * 2^52, see lanes.power_of_two
@@ -19,7 +19,7 @@ _TWO_PI_HIGH = 6.283185307179586
 _TWO_PI_LOW = 2.4492935982947064e-16
 
 
-@kernel
+@inner_kernel
 def exponential(x):
     """e^x for -708 <= x <= 709; smaller arguments give e^-708.
 
@@ -42,7 +42,7 @@ def exponential(x):
     return (1.0 + (r + r2 * tail)) * power_of_two(shifted)
 
 
-@kernel
+@inner_kernel
 def hyperbolic_tangent(x):
     """tanh x for any finite x.
 
@@ -64,7 +64,7 @@ def hyperbolic_tangent(x):
     return pick_less(x, 0.0, 0.0 - result, result)
 
 
-@kernel
+@inner_kernel
 def logarithm(x):
     """ln x for normal positive x.
 
@@ -84,7 +84,7 @@ def logarithm(x):
     return k * _LN2_HIGH + (d - (f * (d - 2.0 * s * series) - k * _LN2_LOW))
 
 
-@kernel
+@inner_kernel
 def sine_of_turns(x):
     """sin(2 pi x) for |x| below 2^50, exact at quarter turns; Taylor's series of sine or cosine within 1/8 turn."""
     x = x - ((x + _ROUND) - _ROUND)  # to [-1/2, 1/2]

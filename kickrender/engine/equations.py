@@ -8,9 +8,9 @@ from __future__ import annotations
 
 import numpy as np
 
-from kickrender.engine.compile import kernel
+from kickrender.engine.compile import inner_kernel, kernel
 from kickrender.engine.elementary import exponential, hyperbolic_tangent, sine_of_turns
-from kickrender.engine.lanes import FLAT, LONE, gather, load, pick_less, spread, store
+from kickrender.engine.lanes import FLAT, gather, load, pick_less, spread, store
 from kickrender.engine.laws import evaluate as evaluate_laws
 from kickrender.engine.method import RODAS5P
 
@@ -62,7 +62,7 @@ def evaluate_devices(code, numbers, vectors, arguments, exp_slopes, exp_values, 
     evaluate_laws(code.spans, numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, with_slopes, width)
 
 
-@kernel
+@inner_kernel
 def set_inputs(code, time, segment_t, segment_v, segment_slope, sines, vectors, second, width):
     """Voltages and slopes of the inputs at `time` (a lane vector) and their second derivatives; in place.
 
@@ -88,7 +88,7 @@ def set_inputs(code, time, segment_t, segment_v, segment_slope, sines, vectors, 
         store(second, m * lanes, bend)
 
 
-@kernel
+@inner_kernel
 def assemble(code, coefficients, slopes, width):
     """W = C/(gamma h) + G + device slopes into its section of `coefficients`, whose section ch holds C/h."""
     lanes = len(width)
@@ -111,7 +111,7 @@ def assemble(code, coefficients, slopes, width):
         store(coefficients, at, load(coefficients, at, width) + slope)
 
 
-@kernel
+@inner_kernel
 def factorise(code, coefficients, per_pivot, row_size, width):
     """Eliminate in place: multipliers (negated) below the pivots, U above, reciprocal pivots in `per_pivot`.
 
@@ -148,7 +148,7 @@ def factorise(code, coefficients, per_pivot, row_size, width):
     return worst
 
 
-@kernel
+@inner_kernel
 def time_derivative(code, coefficients, slopes, vectors, second, rate, width):
     """df/dt at constant x, through the inputs' slopes and second derivatives, into `rate`; shape (size rows,)."""
     lanes = len(width)
@@ -203,16 +203,19 @@ def back_substitute(code, coefficients, per_pivot, vectors, solution, start, wid
 
 
 @kernel
-def matrix_at(code, numbers, coefficients, vectors, time_s, segment_t, segment_v, segment_slope, sines):
-    """Assemble W of one hit at the voltages in `vectors`, into section w of `coefficients`; returns the slopes."""
+def matrix_at(code, numbers, coefficients, vectors, time_s, segment_t, segment_v, segment_slope, sines, width):
+    """Assemble W of one hit at the voltages in `vectors`, into section w of `coefficients`; returns the slopes.
+
+    width : lanes.LONE.
+    """
     arguments = np.zeros(code.exponentials + len(FLAT))
     exp_slopes = np.zeros(code.exponentials + len(FLAT))
     exp_values = np.zeros(code.exponentials + len(FLAT))
     tanhs = np.zeros(code.tanhs + len(FLAT))
     slopes = np.zeros(code.slopes)
     second = np.zeros(code.inputs)
-    time = spread(time_s, LONE)
-    set_inputs(code, time, segment_t, segment_v, segment_slope, sines, vectors, second, LONE)
-    evaluate_devices(code, numbers, vectors, arguments, exp_slopes, exp_values, tanhs, slopes, True, LONE)
-    assemble(code, coefficients, slopes, LONE)
+    time = spread(time_s, width)
+    set_inputs(code, time, segment_t, segment_v, segment_slope, sines, vectors, second, width)
+    evaluate_devices(code, numbers, vectors, arguments, exp_slopes, exp_values, tanhs, slopes, code.size > 0, width)
+    assemble(code, coefficients, slopes, width)
     return slopes

@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from kickrender.circuit.records import ResolvedCircuit
 from kickrender.engine.equations import matrix_at
-from kickrender.engine.lanes import FLAT, PADDING
+from kickrender.engine.lanes import FLAT, LONE, PADDING
 from kickrender.engine.plan import Plan
 from kickrender.engine.program import build_program
 from kickrender.engine.solve import rest_state
@@ -69,6 +69,7 @@ def linearised(circuit: ResolvedCircuit, state: Mapping[str, float] | None = Non
         np.array([state[name] for name in topology.inputs]),
         np.zeros(inputs),
         np.zeros(3 * inputs),
+        LONE,
     )
     matrix, rates = np.zeros((2, size, size))
     input_matrix, input_rates = np.zeros((2, size, inputs))

@@ -13,14 +13,14 @@ from __future__ import annotations
 
 import numpy as np
 
-from kickrender.engine.compile import kernel
+from kickrender.engine.compile import inner_kernel, kernel
 from kickrender.engine.elementary import logarithm
 from kickrender.engine.equations import assemble, evaluate_devices, residual
-from kickrender.engine.lanes import FLAT, LONE, load, spread, store
+from kickrender.engine.lanes import FLAT, load, spread, store
 
 SETTLED, NOT_SETTLED = 0, 1
 
-_NEWTON_ITERATIONS = 120
+LIMITS = np.array([120, 1])  # Newton iterations for a state, and for one pseudo step
 _SOURCE_STEPS = 200
 _PSEUDO_STEPS = 3000
 _CLOSE_V = 1e-7  # a full Newton step below this is convergence; rounding decides what is below
@@ -30,7 +30,7 @@ _NO_STEP_S = 1e-15
 
 
 @kernel
-def settle(code, hit_numbers, hit_inputs, hit_x, results, worst, work_w, work_f):
+def settle(code, hit_numbers, hit_inputs, hit_x, results, worst, work_w, work_f, limits, width):
     """Rest states of a batch.
 
     Parameters
@@ -41,6 +41,7 @@ def settle(code, hit_numbers, hit_inputs, hit_x, results, worst, work_w, work_f)
     results : (hits, 3) int64: SETTLED or NOT_SETTLED, iterations in all, row of the largest residual.
     worst : (hits,) that residual. [A], or [V/s] in an op-amp's row
     work_w, work_f : (size, size) and (code.coefficients,); scratch.
+    limits : LIMITS. width : lanes.LONE. Arguments, since the compiler makes a version of its own for every constant.
     """
     size = code.size
     numbers = np.zeros(code.numbers + len(FLAT))
@@ -60,7 +61,7 @@ def settle(code, hit_numbers, hit_inputs, hit_x, results, worst, work_w, work_f)
         level = 1.0  # of the sources
         state = (numbers, vectors, arguments, before, exp_slopes, exp_values, tanhs, slopes, rate, x, dx)
         _set_sources(code, hit_numbers[hit], hit_inputs[hit], 1.0, numbers, vectors, work_f)
-        done, count = _newton(code, state, work_w, work_f, 0.0, _NEWTON_ITERATIONS)
+        done, count = _newton(code, state, work_w, work_f, 0.0, limits[0], width)
         iterations += count
         if not done:
             x[:] = 0.0
@@ -69,7 +70,7 @@ def settle(code, hit_numbers, hit_inputs, hit_x, results, worst, work_w, work_f)
             for _ in range(_SOURCE_STEPS):
                 trial = min(1.0, level + stride)
                 _set_sources(code, hit_numbers[hit], hit_inputs[hit], trial, numbers, vectors, work_f)
-                done, count = _newton(code, state, work_w, work_f, 0.0, _NEWTON_ITERATIONS)
+                done, count = _newton(code, state, work_w, work_f, 0.0, limits[0], width)
                 iterations += count
                 if done:
                     level = trial
@@ -88,7 +89,7 @@ def settle(code, hit_numbers, hit_inputs, hit_x, results, worst, work_w, work_f)
             _set_sources(code, hit_numbers[hit], hit_inputs[hit], 1.0, numbers, vectors, work_f)
             pseudo_step = _FIRST_PSEUDO_STEP_S
             for index in range(_PSEUDO_STEPS):
-                done, count = _newton(code, state, work_w, work_f, 1.0 / pseudo_step, 1)
+                done, count = _newton(code, state, work_w, work_f, 1.0 / pseudo_step, limits[1], width)
                 iterations += count
                 longest = 0.0
                 for row in range(size):
@@ -97,14 +98,14 @@ def settle(code, hit_numbers, hit_inputs, hit_x, results, worst, work_w, work_f)
                     break
                 pseudo_step *= 0.5 if longest > 2.0 else (2.0 if longest < 0.5 else 1.0)
                 if longest < 1e-3 and index % 8 == 7:
-                    done, count = _newton(code, state, work_w, work_f, 0.0, _NEWTON_ITERATIONS)
+                    done, count = _newton(code, state, work_w, work_f, 0.0, limits[0], width)
                     iterations += count
                     if done:
                         break
         hit_x[hit] = x
         results[hit, 0] = SETTLED if done else NOT_SETTLED
         results[hit, 1] = iterations
-        _evaluate(code, state, work_f)
+        _evaluate(code, state, work_f, width)
         results[hit, 2] = 0
         for row in range(size):
             if not abs(vectors[code.v_y + row]) <= abs(vectors[code.v_y + results[hit, 2]]):
@@ -113,12 +114,13 @@ def settle(code, hit_numbers, hit_inputs, hit_x, results, worst, work_w, work_f)
 
 
 @kernel
-def project(code, hit_numbers, inputs, x, work_w, work_f):
+def project(code, hit_numbers, inputs, x, work_w, work_f, limits, width):
     """Move x, in place, to the state next to it whose algebraic equations hold; charges and fluxes stay.
 
     Newton's method on implicit steps C dx/h = f(x + dx) of h = 1e-15 s, in which no capacitor charges noticeably.
 
-    hit_numbers : (code.numbers,). inputs : (inputs,). [V] x : (code.size,). [V], [A] work_w, work_f : as in settle.
+    hit_numbers : (code.numbers,). inputs : (inputs,). [V] x : (code.size,). [V], [A] work_w, work_f, limits,
+    width : as in settle.
     Returns how far the last iteration still moved any unknown.
     """
     numbers = np.zeros(code.numbers + len(FLAT))
@@ -133,9 +135,9 @@ def project(code, hit_numbers, inputs, x, work_w, work_f):
     state = (numbers, vectors, arguments, before, exp_slopes, exp_values, tanhs, slopes, np.zeros(code.stride), x, dx)
     _set_sources(code, hit_numbers, inputs, 1.0, numbers, vectors, work_f)
     longest = np.inf
-    for _ in range(_NEWTON_ITERATIONS):
+    for _ in range(limits[0]):
         last = longest
-        _newton(code, state, work_w, work_f, 1.0 / _NO_STEP_S, 1)
+        _newton(code, state, work_w, work_f, 1.0 / _NO_STEP_S, limits[1], width)
         longest = 0.0
         for row in range(code.size):
             if not abs(dx[row]) <= longest:
@@ -145,7 +147,7 @@ def project(code, hit_numbers, inputs, x, work_w, work_f):
     return longest
 
 
-@kernel
+@inner_kernel
 def _set_sources(code, hit_numbers, inputs, level, numbers, vectors, coefficients):
     """Load one hit's numbers with all its sources scaled by `level`; no capacitor current, no factors."""
     numbers[: code.numbers] = hit_numbers
@@ -162,18 +164,18 @@ def _set_sources(code, hit_numbers, inputs, level, numbers, vectors, coefficient
         vectors[code.stride + code.inputs + row] = hit_numbers[code.n_held + row] * level
 
 
-@kernel
-def _evaluate(code, state, coefficients):
+@inner_kernel
+def _evaluate(code, state, coefficients, width):
     """f(x) into section y of the vectors, and every device's slopes."""
     numbers, vectors, arguments, before, exp_slopes, exp_values, tanhs, slopes, rate, x, dx = state
     for row in range(code.size):
         vectors[row] = x[row]
-    evaluate_devices(code, numbers, vectors, arguments, exp_slopes, exp_values, tanhs, slopes, True, LONE)
-    residual(code, numbers, coefficients, vectors, rate, spread(0.0, LONE), LONE)
+    evaluate_devices(code, numbers, vectors, arguments, exp_slopes, exp_values, tanhs, slopes, code.size > 0, width)
+    residual(code, numbers, coefficients, vectors, rate, spread(0.0, width), width)
 
 
-@kernel
-def _newton(code, state, matrix, coefficients, per_pseudo_step, most):
+@inner_kernel
+def _newton(code, state, matrix, coefficients, per_pseudo_step, most, width):
     """Up to `most` damped Newton steps on C x' = f(x) with x' = dx per_pseudo_step; whether it settled, and steps.
 
     `coefficients` has a zero w section, so that section y of the vectors is f(x) itself.
@@ -183,13 +185,13 @@ def _newton(code, state, matrix, coefficients, per_pseudo_step, most):
     first = code.first_w
     last = np.inf
     for iteration in range(most):
-        _evaluate(code, state, coefficients)
+        _evaluate(code, state, coefficients, width)
         for e in range(code.exponentials):
             before[e] = arguments[e]
         for p in range(code.ch):
             # assemble() divides by gamma; a constant factor of the pseudo step does not matter
             coefficients[code.first_ch + p] = numbers[code.n_c + p] * per_pseudo_step
-        assemble(code, coefficients, slopes, LONE)
+        assemble(code, coefficients, slopes, width)
         matrix[:] = 0.0
         for row in range(size):
             dx[row] = vectors[code.v_y + row]
@@ -214,7 +216,7 @@ def _newton(code, state, matrix, coefficients, per_pseudo_step, most):
                 change -= dx[minus] * per_volt
             after = before[e] + change
             if after > _STEEP_ARGUMENT and change > 2.0:
-                allowed = 1.0 + _log(change)
+                allowed = 1.0 + _log(change, width)
                 if before[e] < _STEEP_ARGUMENT:
                     allowed += _STEEP_ARGUMENT - before[e]
                 share = min(share, allowed / change)
@@ -235,12 +237,12 @@ def _newton(code, state, matrix, coefficients, per_pseudo_step, most):
     return per_pseudo_step == 0.0 and last < _CLOSE_V, most
 
 
-@kernel
-def _log(value):
+@inner_kernel
+def _log(value, width):
     """ln of one float."""
     box = np.empty(1)
     box[0] = value
-    store(box, 0, logarithm(load(box, 0, LONE)))
+    store(box, 0, logarithm(load(box, 0, width)))
     return box[0]
 
 

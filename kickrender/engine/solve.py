@@ -28,7 +28,7 @@ from kickrender.errors import SolveError
 
 ENGINE_VERSION = "1"  # moves whenever a render's bytes may move
 
-DEFAULT_TOLERANCE = 1e-6  # error of one step, relative to a voltage
+DEFAULT_TOLERANCE = 5e-7  # error of one step, relative to a voltage
 ABSOLUTE_SHARE = 0.3  # volts (or amperes) below which the tolerance no longer shrinks with the value
 SIDE_BY_SIDE = (0,) * 8  # lanes
 _BATCH = 64  # hits prepared at once: bounds memory
@@ -184,7 +184,8 @@ def _settle(
     x = np.zeros((len(hits), code.size))
     results = np.zeros((len(hits), 3), dtype=np.int64)
     worst = np.zeros(len(hits))
-    rest.settle(code, numbers, inputs, x, results, worst, np.zeros((code.size, code.size)), np.zeros(code.coefficients))
+    scratch = np.zeros((code.size, code.size)), np.zeros(code.coefficients)
+    rest.settle(code, numbers, inputs, x, results, worst, *scratch, rest.LIMITS, LONE)
     errors = [
         None
         if results[i, 0] == rest.SETTLED
@@ -208,7 +209,8 @@ def _started(
     given = hit.start or {}
     x = np.array([given.get(name, at_rest) for name, at_rest in zip(program.unknowns, x_rest, strict=True)])
     inputs = np.array([_at_zero(hit.segments, m) for m in range(code.inputs)])
-    moved = rest.project(code, numbers, inputs, x, np.zeros((code.size, code.size)), np.zeros(code.coefficients))
+    scratch = np.zeros((code.size, code.size)), np.zeros(code.coefficients)
+    moved = rest.project(code, numbers, inputs, x, *scratch, rest.LIMITS, LONE)
     if not moved < _CONSISTENT_V:
         raise SolveError(
             "no rest state", hit.circuit.name, "No state follows from the start voltages given.", residual=float(moved)
@@ -413,6 +415,7 @@ def _matrix_at(program: Program, hit: _Hit, run: _Run) -> NDArray[np.float64]:
         run.t,
         *set_now,
         hit.segments.sines.ravel().copy(),
+        LONE,
     )
     first = code.first_w
     matrix = np.zeros((size, size))

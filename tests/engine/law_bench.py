@@ -45,7 +45,7 @@ def measured(
     rows = {index: name for name, index in topology.rows.items()}
     f = {rows[k]: float(vectors[code.v_y + k]) for k in range(code.size)}
     none = np.zeros(code.inputs)
-    matrix_at(code, numbers, coefficients, vectors, 0.0, np.zeros(1), none, none, np.zeros(3 * code.inputs))
+    matrix_at(code, numbers, coefficients, vectors, 0.0, np.zeros(1), none, none, np.zeros(3 * code.inputs), LONE)
     slope = {
         (rows[row], topology.unknowns[column]): float(coefficients[code.first_w + entry])
         for entry, (row, column) in enumerate(program.pattern)

@@ -117,7 +117,9 @@ def test_the_kernels_elimination_is_numpys_solve(name):
     vectors[code.stride + code.inputs :][: code.known - code.inputs] = layout[code.n_held :]
     none = np.zeros(code.inputs)
     # the matrix, unfactored
-    equations.matrix_at(code, numbers, coefficients, vectors, 0.0, np.zeros(1), none, none, np.zeros(3 * code.inputs))
+    equations.matrix_at(
+        code, numbers, coefficients, vectors, 0.0, np.zeros(1), none, none, np.zeros(3 * code.inputs), LONE
+    )
     matrix = np.zeros((code.size, code.size))
     for entry, (row, column) in enumerate(program.pattern):
         matrix[row, column] = coefficients[code.first_w + entry]

@@ -6,7 +6,7 @@ memory; `evaluate` calls them in that order.
 
 from __future__ import annotations
 
-from kickrender.engine.compile import kernel
+from kickrender.engine.compile import inner_kernel
 from kickrender.engine.laws import controlled, diode, jfet, linear, opamp, ota, transistor, windings, zener
 
 STAMPS = {
@@ -31,7 +31,7 @@ STAMPS = {
 LAWS = ("diode", "transistor", "opamp", "jfet", "zener", "ota")
 
 
-@kernel
+@inner_kernel
 def evaluate(spans, numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, with_slopes, width):
     """Outputs and slopes of every device; spans of shape (len(LAWS), 6), the rest as in diode.evaluate."""
     diode.evaluate(spans[0], numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, with_slopes, width)

@@ -19,7 +19,7 @@ every voltage and current is reversed.
 from __future__ import annotations
 
 from kickrender.circuit.records import ResolvedPart
-from kickrender.engine.compile import kernel
+from kickrender.engine.compile import inner_kernel
 from kickrender.engine.lanes import load, pick_less, store
 from kickrender.engine.physics import MINIMUM_CONDUCTANCE_S, saturation_current, thermal_voltage
 from kickrender.engine.stamps import Device, Stamps
@@ -66,7 +66,7 @@ def stamp(part: ResolvedPart, stamps: Stamps) -> None:
     )
 
 
-@kernel
+@inner_kernel
 def evaluate(span, numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, with_slopes, width):
     """Channel and gate currents and their four slopes. [A], [S]; arguments as in diode.evaluate."""
     lanes = len(width)

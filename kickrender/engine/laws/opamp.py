@@ -12,7 +12,7 @@ from __future__ import annotations
 from math import pi
 
 from kickrender.circuit.records import ResolvedPart
-from kickrender.engine.compile import kernel
+from kickrender.engine.compile import inner_kernel
 from kickrender.engine.lanes import load, store
 from kickrender.engine.stamps import Device, Stamps
 
@@ -58,7 +58,7 @@ def stamp(part: ResolvedPart, stamps: Stamps) -> None:
     )
 
 
-@kernel
+@inner_kernel
 def evaluate(span, numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, with_slopes, width):
     """Rate of the output and its slopes. [V/s], [1/s]; arguments as in diode.evaluate."""
     lanes = len(width)

@@ -11,7 +11,7 @@ from __future__ import annotations
 
 from kickrender.circuit import exact
 from kickrender.circuit.records import ResolvedPart
-from kickrender.engine.compile import kernel
+from kickrender.engine.compile import inner_kernel
 from kickrender.engine.lanes import load, store
 from kickrender.engine.physics import MINIMUM_CONDUCTANCE_S, saturation_current, thermal_voltage
 from kickrender.engine.stamps import Device, Stamps
@@ -55,7 +55,7 @@ def stamp(part: ResolvedPart, stamps: Stamps) -> None:
     )
 
 
-@kernel
+@inner_kernel
 def evaluate(span, numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, with_slopes, width):
     """Current and conductance of every zener diode. [A], [S]; arguments as in diode.evaluate."""
     lanes = len(width)
