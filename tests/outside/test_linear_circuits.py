@@ -1,4 +1,4 @@
-"""RC and RLC circuits against their closed forms, as any textbook of circuit theory has them; facts of the trade."""
+"""RC and RLC circuits against their closed forms, as any textbook of circuit theory has them."""
 
 from __future__ import annotations
 
@@ -7,7 +7,7 @@ import pytest
 from scipy import signal
 
 from kickrender.engine import poles, solve
-from tests.engine.circuits import RAILS, circuit, rc
+from tests.engine.circuits import circuit, rc
 
 RATE_HZ = 96_000.0
 DEFAULT_DB, TIGHT_DB = -100.0, -170.0
@@ -130,50 +130,3 @@ def test_a_ladder_against_a_matrix_exponential():
     u = np.interp(t, *np.array(corners).T)
     _, true, _ = signal.lsim((a, b, np.eye(count)[-1:], np.zeros((1, 1))), u, t)
     assert residual_db(found, true.ravel()) < -160.0
-
-
-# Facts of the trade: common practice, no source.
-
-
-def test_50k_with_15n_turns_over_near_220_hz():
-    (pole,) = poles(rc('constant = "0V"', "50k", "15n"))
-    assert pole.frequency_hz == pytest.approx(220.0, rel=0.05)
-
-
-def bridged_t(length: str, feedback_ohm: str | None = None):
-    parts = {
-        "Rs": "resistor 1M gate leg",
-        "Rl": "resistor 10k leg ground",
-        "C1": "capacitor 15n out leg",
-        "C2": "capacitor 15n leg sum",
-        "Rb": "resistor 1M out sum",
-        "U": "opamp fet-input ground sum out plus minus",
-    }
-    if feedback_ohm:
-        parts |= {
-            "Ra": "resistor 10k out turn",
-            "Rc": "resistor 10k turn again",
-            "U2": "opamp fet-input ground turn again plus minus",
-            "Rf": f"resistor {feedback_ohm} again leg",
-        }
-    gate = f'pulse = {{ rest = "0V", strike = "5V", length = "{length}" }}'
-    return circuit(parts, inputs={"gate": gate}, nets=RAILS)
-
-
-def test_a_long_gate_strikes_a_resonator_twice():
-    """At its rise and at its fall, with opposite sign; a gate straight into the leg."""
-    x = solve(bridged_t("150ms"), 0.3).sample(RATE_HZ, int(0.3 * RATE_HZ))
-    before = np.max(np.abs(x[int(0.13 * RATE_HZ) : int(0.149 * RATE_HZ)]))
-    after = np.max(np.abs(x[int(0.15 * RATE_HZ) : int(0.17 * RATE_HZ)]))
-    assert after > 20.0 * before
-    assert after == pytest.approx(np.max(np.abs(x[: int(0.02 * RATE_HZ)])), rel=0.01)
-
-
-def test_feedback_into_the_node_between_the_capacitors_lengthens_the_decay():
-    """And hardly moves the pitch: an inverted copy of the output through 1 Mohm doubles tau."""
-    plain, fed = (
-        next(pole for pole in poles(chosen) if pole.rings and pole.frequency_hz < 1e3)
-        for chosen in (bridged_t("4ms"), bridged_t("4ms", "1M"))
-    )
-    assert fed.decay_s > 1.8 * plain.decay_s
-    assert fed.frequency_hz == pytest.approx(plain.frequency_hz, rel=0.01)

@@ -170,27 +170,3 @@ def test_default_tolerance_keeps_pitch_and_decay():
     found = heard(circuit_of(entry, 1e9), entry["f0"], 40, DEFAULT_TOLERANCE)
     assert found.frequency_hz == pytest.approx(entry["f_damped"], rel=1e-4)
     assert found.tau_s == pytest.approx(entry["tau"], rel=1e-3)
-
-
-# Common practice, no source: what a bridged-T with 1 Mohm across and two 15 nF does for three legs.
-LEGS = {"51k": 50.0, "10k": 110.0, "2k": 250.0}
-
-
-@pytest.mark.parametrize("leg", LEGS)
-def test_legs_of_a_bridged_t_ring_where_practice_says(leg):
-    ohm = 1e3 * float(leg[:-1])
-    entry = {
-        "netlist": [
-            part | ({"value": ohm} if part["name"] == "Rl" else {}) for part in CASES["bridged_T_equal_C"]["netlist"]
-        ]
-    }
-    assert ringing(circuit_of(entry, 3e6)).frequency_hz == pytest.approx(LEGS[leg], rel=0.1)
-
-
-def test_a_bridged_t_with_legs_alike_does_not_ring():
-    """Common practice, no source: alike it does not ring, orders of magnitude apart it rings long."""
-    netlist = CASES["bridged_T_equal_C"]["netlist"]
-    alike = {"netlist": [part | ({"value": 1e6} if part["name"] == "Rl" else {}) for part in netlist]}
-    apart = {"netlist": [part | ({"value": 100.0} if part["name"] == "Rl" else {}) for part in netlist]}
-    assert not [pole for pole in poles(circuit_of(alike, 3e6)) if pole.frequency_hz < 1e4 and pole.q > 0.55]
-    assert ringing(circuit_of(apart, 3e6)).q > 45.0
