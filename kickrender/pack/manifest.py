@@ -76,6 +76,7 @@ def _entry(folder: Path, name: str) -> dict[str, Any]:
         "pcm_sha256": facts["pcm"]["sha256"],
         "gain_db": facts["gain_db"],
         "measurements": facts["measurements"],
+        **{key: facts["pack"][key] for key in ("goals", "velocity") if key in facts["pack"]},
     }
 
 

@@ -71,14 +71,14 @@ class BlockReading:
         reading = self.reading
         before = len(reading.faults)
         design = self.design()
-        axes: dict[str, Axis] = {}
+        walked: dict[str, tuple[Any, Where]] = {}
         fixed: dict[str, Setting] = {}
         goals: dict[str, Goal] = {}
         places: dict[str, str] = {}
         for raw, keys in [(reading.raw, ()), (self.entry, self.where)] if self.where else [(reading.raw, ())]:
             fixed_here = reading.table(raw, keys, "fixed")
             for name, value in fixed_here.items():
-                axes.pop(name, None)
+                walked.pop(name, None)
                 self.fix(name, value, (*keys, "fixed", name), fixed, goals)
                 places[name] = reading.at(*keys, "fixed", name)
             for name, value in reading.table(raw, keys, "axes").items():
@@ -87,8 +87,9 @@ class BlockReading:
                 self.walked[name] = None
                 fixed.pop(name, None)
                 goals.pop(name, None)
-                if axis := self.axis(name, value, (*keys, "axes", name), design):
-                    axes[name] = axis
+                walked[name] = value, (*keys, "axes", name)
+        found = {name: self.axis(name, value, where, design) for name, (value, where) in walked.items()}
+        axes = {name: axis for name, axis in found.items() if axis}
         layers, takes = self.layers(axes, fixed), self.takes()
         strikes, strikes_where = self.own("hits")
         strikes_s = ONCE

@@ -110,8 +110,8 @@ def test_a_fault_in_a_block_names_its_line(folder: Path) -> None:
     text = PACK + "[[blocks]]\n[[blocks]]\naxis = 3\n"
     line = text.splitlines().index("axis = 3") + 1
     assert faults_of(text, folder) == [
-        f"p.toml:{line}, blocks.1.axis: unknown key 'axis'; allowed: circuit, axes, fixed, design, layers, takes, hits; "
-        "did you mean 'axes'?"
+        f"p.toml:{line}, blocks.1.axis: unknown key 'axis'; allowed: circuit, axes, fixed, design, layers, takes, "
+        "hits; did you mean 'axes'?"
     ]
 
 
