@@ -73,7 +73,8 @@ def contact_sheet(manifest: Mapping[str, Any], thumbnails: Sequence[Thumbnail], 
 def cells_across(settings: Sequence[Mapping[str, Any]]) -> int:
     """How many cells stand side by side, for hits with these axis values in order.
 
-    Whole turns of the fastest axes, as many as bring the grid nearest to a page; for no full grid, or a long and narrow one, just a page.
+    Whole turns of the fastest axes, as many as bring the grid nearest to a page; where that is no full grid, or a
+    long and narrow one, what fills a page.
     """
     count = len(settings)
     ideal = max(1.0, math.sqrt(count * CELL_INCHES[1] / CELL_INCHES[0] * 1.2))

@@ -416,7 +416,7 @@
     else return;
     event.preventDefault();
   });
-  addEventListener("keyup", (event) => { if (isSpaceForUs(event)) event.preventDefault(); }); // or it would click again
+  addEventListener("keyup", (event) => { if (isSpaceForUs(event)) event.preventDefault(); }); // some browsers click here
 
   if (matchMedia("(max-width: 760px)").matches) at("filters").open = false;
   showStars();
