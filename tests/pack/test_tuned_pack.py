@@ -198,15 +198,16 @@ def test_a_second_strike_is_heard_in_the_ring_of_the_first(bells: Path) -> None:
     ("old", "new", "fault"),
     [
         ('"C2", "F#2"', '"C5"',
-         "p.toml:10, axes.pitch (circuit 'bell'): pitch C5 (523.3 Hz) is out of reach of control 'tune' with decay 0.3 s, "
-         "force 0.25V; allowed: 50."),
+         "p.toml:10, axes.pitch (circuit 'bell'): pitch C5 (523.3 Hz) is out of reach of control 'tune' with "
+         "decay 0.3 s, force 0.25V; allowed: 50."),
         ("seconds = 0.3", "seconds = 5",
          "p.toml:12, fixed.decay (circuit 'bell'): a decay of 5 s in a file of at most 4 s"),
         ("decay = { seconds", "drop = { semitones",
          "p.toml:12, fixed.drop (circuit 'bell'): no control of the circuit answers to 'drop'; allowed: goals of the "
          "circuit's table"),
         ("[fixed]", '[fixed]\ntune = "2u"',
-         "p.toml:10, axes.pitch (circuit 'bell'): control 'tune' is set, and sought for 'pitch'; allowed: one of the two"),
+         "p.toml:10, axes.pitch (circuit 'bell'): control 'tune' is set, and sought for 'pitch'; allowed: "
+         "one of the two"),
     ],
 )  # fmt: skip
 def test_goals_that_cannot_be_met_stop_a_pack_before_it_starts(old: str, new: str, fault: str, bells: Path) -> None:
