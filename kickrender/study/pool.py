@@ -18,14 +18,14 @@ class Pooled:
     """Results of one pair of sounds, taken together.
 
     labels, digests : of the two sounds.
-    sessions : number of files. trials, correct : over all of them.
+    sittings : number of files. trials, correct : over all of them.
     p_value : probability of so many right answers or more by guessing; exact, one-sided.
-    each : (file, listener, correct, trials) of every session.
+    each : (file, listener, correct, trials) of every sitting.
     """
 
     labels: tuple[str, str]
     digests: tuple[str, str]
-    sessions: int
+    sittings: int
     trials: int
     correct: int
     p_value: float
@@ -33,12 +33,12 @@ class Pooled:
 
 
 def pool_results(paths: Sequence[str | Path]) -> Pooled:
-    """Right answers of several sessions with the same two sounds, counted anew from their trials.
+    """Right answers of several sittings with the same two sounds, counted anew from their trials.
 
     Raises
     ------
     InputError
-        For files that are no whole result, results of different sounds, or a session given twice.
+        For files that are no whole result, results of different sounds, or a sitting given twice.
 
     Source: the binomial test, by scipy.stats.binomtest.
     """
@@ -54,9 +54,9 @@ def pool_results(paths: Sequence[str | Path]) -> Pooled:
         for path, result in results:
             if set(result.digests) != set(first.digests):
                 faults.append(Fault(path, "a result of other sounds", f"results of the two sounds of {first_path}"))
-            if result.session in seen:
-                faults.append(Fault(path, f"the same session as {seen[result.session]}", "each session once"))
-            seen[result.session] = path
+            if result.sitting in seen:
+                faults.append(Fault(path, f"the same sitting as {seen[result.sitting]}", "each sitting once"))
+            seen[result.sitting] = path
     if faults:
         raise InputError(faults)
     trials = sum(len(result.answers) for _, result in results)
@@ -64,7 +64,7 @@ def pool_results(paths: Sequence[str | Path]) -> Pooled:
     return Pooled(
         labels=first.labels,
         digests=first.digests,
-        sessions=len(results),
+        sittings=len(results),
         trials=trials,
         correct=correct,
         p_value=float(binomtest(correct, trials, 0.5, alternative="greater").pvalue),
@@ -74,9 +74,9 @@ def pool_results(paths: Sequence[str | Path]) -> Pooled:
 
 @dataclass(frozen=True)
 class _Result:
-    """One session: answers are pairs (what X was, what was said), each "A" or "B"."""
+    """One sitting: answers are pairs (what X was, what was said), each "A" or "B"."""
 
-    session: str
+    sitting: str
     listener: str
     labels: tuple[str, str]
     digests: tuple[str, str]
@@ -103,7 +103,7 @@ def _read_result(path: Path, faults: list[Fault]) -> _Result | None:
         sounds = [raw["sounds"][k] for k in "AB"]
         answers = tuple((trial["x"], trial["answer"]) for trial in raw["trials"])
         result = _Result(
-            session=str(raw["session"]),
+            sitting=str(raw["sitting"]),
             listener=str(raw["listener"]),
             labels=(str(sounds[0]["label"]), str(sounds[1]["label"])),
             digests=(str(sounds[0]["digest"]), str(sounds[1]["digest"])),

@@ -18,7 +18,7 @@ def result_file(path: Path, right: int, count: int, **change: Any) -> Path:
     whole = {
         "schema": "kickrender blind result",
         "schema_version": 1,
-        "session": path.stem,
+        "sitting": path.stem,
         "listener": "L",
         "sounds": {"A": {"label": "one", "digest": "11"}, "B": {"label": "other", "digest": "22"}},
         "trials_planned": count,
@@ -36,7 +36,7 @@ def test_results_of_one_pair_are_pooled_also_when_the_sides_were_swapped(tmp_pat
     swapped = {"A": {"label": "other", "digest": "22"}, "B": {"label": "one", "digest": "11"}}
     paths = [result_file(tmp_path / "a.json", 12, 16), result_file(tmp_path / "b.json", 9, 16, sounds=swapped)]
     pooled = pool_results(paths)
-    assert (pooled.sessions, pooled.trials, pooled.correct) == (2, 32, 21)
+    assert (pooled.sittings, pooled.trials, pooled.correct) == (2, 32, 21)
     assert pooled.p_value == pytest.approx(sum(math.comb(32, k) for k in range(21, 33)) / 2**32, rel=1e-14)
     assert [entry[2:] for entry in pooled.each] == [(12, 16), (9, 16)]
 
@@ -48,7 +48,7 @@ def test_results_that_do_not_belong_together_are_refused_all_at_once(tmp_path: P
     paths = [
         result_file(tmp_path / "a.json", 12, 16),
         result_file(tmp_path / "b.json", 12, 16, sounds=other),
-        result_file(tmp_path / "c.json", 12, 16, session="a"),
+        result_file(tmp_path / "c.json", 12, 16, sitting="a"),
         result_file(tmp_path / "d.json", 12, 16, correct=15),
         result_file(tmp_path / "e.json", 12, 16, trials_planned=20),
         tmp_path / "broken.json",
@@ -60,7 +60,7 @@ def test_results_that_do_not_belong_together_are_refused_all_at_once(tmp_path: P
     told = {Path(fault.place).name: fault.found for fault in caught.value.faults}
     assert told == {
         "b.json": "a result of other sounds",
-        "c.json": f"the same session as {tmp_path / 'a.json'}",
+        "c.json": f"the same sitting as {tmp_path / 'a.json'}",
         "d.json": "says 15 right of 16; its trials say 12 of 16",
         "e.json": "says 12 right of 20; its trials say 12 of 16",
         "broken.json": "not JSON",

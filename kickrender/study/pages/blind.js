@@ -159,12 +159,12 @@
       if (t.x !== t.answer) row.className = "wrong";
       for (const text of [k + 1, t.x, t.answer, t.seconds.toFixed(1)]) row.insertCell().textContent = text;
     }
-    const session = [...crypto.getRandomValues(new Uint8Array(16))].map((b) => b.toString(16).padStart(2, "0")).join("");
+    const sitting = [...crypto.getRandomValues(new Uint8Array(16))].map((b) => b.toString(16).padStart(2, "0")).join("");
     const result = {
       schema: data.schema,
       schema_version: data.schema_version,
       title: document.querySelector("h1").textContent,
-      session,
+      sitting,
       listener: at("listener").value.trim(),
       finished: new Date().toISOString(),
       sounds: Object.fromEntries(sounds.map((sound, k) => [LETTERS[k], { label: sound.label, digest: sound.digest }])),
@@ -177,7 +177,7 @@
       const link = document.createElement("a");
       const text = `${JSON.stringify(result, null, 2)}\n`;
       link.href = URL.createObjectURL(new Blob([text], { type: "application/json" }));
-      link.download = `blind-result-${session.slice(0, 8)}.json`;
+      link.download = `blind-result-${sitting.slice(0, 8)}.json`;
       document.body.append(link);
       link.click();
       link.remove();
