@@ -14,11 +14,13 @@ from typing import TYPE_CHECKING, Any
 if TYPE_CHECKING:
     from pathlib import Path
 
+    from kickrender.lock.records import Lock
+    from kickrender.lock.verify import Verification
     from kickrender.pack.run import Result
     from kickrender.sound.loaded import LoadedCircuit
 
 __version__ = "0.1.0"
-__all__ = ["__version__", "describe", "load", "render_pack", "shipped"]
+__all__ = ["__version__", "describe", "load", "lock_pack", "render_pack", "shipped", "verify_pack"]
 
 
 def load(name_or_path: str | Path) -> LoadedCircuit:
@@ -45,6 +47,36 @@ def render_pack(
     plan = plan_pack(read_pack(name_or_path))
     warm_up()  # before workers start: each of them would compile for itself
     return render_plan(plan, Path(out), jobs, progress or (lambda hits: None))
+
+
+def lock_pack(name_or_path: str | Path, lock: str | Path, *, audio: bool = False, jobs: int = 1) -> Lock:
+    """Write the lock file of a pack, by shipped name or path; see `kickrender.lock.make.write_lock`."""
+    from pathlib import Path
+
+    from kickrender.lock.make import pack_name, write_lock
+    from kickrender.pack.plan import plan_pack
+    from kickrender.pack.read import read_pack
+    from kickrender.sound.warm_up import warm_up
+
+    warm_up()
+    pack = read_pack(name_or_path)
+    name = pack_name(pack, str(name_or_path), Path(lock))
+    return write_lock(plan_pack(pack), Path(lock), name, audio=audio, jobs=jobs)
+
+
+def verify_pack(name_or_path: str | Path, lock: str | Path, *, jobs: int = 1) -> Verification:
+    """What moved since a pack was locked; see `kickrender.lock.verify.verify_plan`."""
+    from pathlib import Path
+
+    from kickrender.lock.text import read_lock
+    from kickrender.lock.verify import verify_plan
+    from kickrender.pack.plan import plan_pack
+    from kickrender.pack.read import read_pack
+    from kickrender.sound.warm_up import warm_up
+
+    locked = read_lock(Path(lock))
+    warm_up()
+    return verify_plan(plan_pack(read_pack(name_or_path)), locked, jobs=jobs)
 
 
 def describe(name_or_path: str | Path, settings: Mapping[str, float | str | bool] | None = None) -> dict[str, Any]:

@@ -9,6 +9,7 @@ from pathlib import Path
 
 import pytest
 
+import kickrender
 from kickrender.errors import InputError, WriteError
 from kickrender.lock.make import NotLocked, check_target, lock_path, pack_name, write_lock
 from kickrender.lock.text import read_lock
@@ -128,3 +129,27 @@ def test_where_a_lock_file_lies_and_what_it_calls_its_pack(folder: Path) -> None
     assert pack_name(read_pack(path), str(path), folder / "locks" / "a.lock") == "../bells.toml"
     assert lock_path(read_pack("night-ferry"), "night-ferry") == Path("night-ferry.lock")
     assert pack_name(read_pack("night-ferry"), "night-ferry", folder / "a.lock") == "night-ferry"
+
+
+def test_the_same_from_python(folder: Path) -> None:
+    locked = kickrender.lock_pack(folder / "bells.toml", folder / "bells.lock", audio=True)
+    assert list(locked.hits) == [*BELLS, *GONGS]
+    assert kickrender.verify_pack(folder / "bells.toml", folder / "bells.lock").passes()
+
+
+def test_goals_layers_takes_and_strikes_are_held_still_too(folder: Path, edit: Edit) -> None:
+    edit("bell.toml", 'full_scale = "0.5V"', 'full_scale = "0.5V"\n[goals]\npitch = "size"')
+    size = '[controls.size]\nsets = "C1"\nfrom = "0.2u"\nto = "4u"\nlaw = "geometric"\nstart = "1u"\n'
+    edit("bell.toml", "[output]", size + "[output]")
+    edit("bells.toml", '["bell.toml", "gong.toml"]', '"bell.toml"')
+    edit("bells.toml", 'R1 = ["10k", "15k"]', "pitch = { hertz = [90, 120] }")
+    edit("bells.toml", "[files]", '[takes]\ncount = 2\nseed = 7\n[takes.spread]\nresistor = "5%"\n[files]')
+    edit("bells.toml", "{R1}-{accent}", "{pitch}-{accent}-{take}")
+    locked = lock_in(folder)
+    settings = [hit.settings for hit in locked.hits.values()]
+    assert len({tuple(fields.items()) for fields in settings}) == len(settings) == 8
+    assert all("size" in fields and "spread:R1.value" in fields for fields in settings)
+    assert verify_in(folder).passes()
+    edit("bells.toml", "5%", "6%")
+    causes = {str(cause).split()[1].split(":")[0] for v in verify_in(folder).verdicts for cause in v.causes}
+    assert "spread" in causes

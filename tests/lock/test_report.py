@@ -7,9 +7,10 @@ import pytest
 
 from kickrender.lock.report import open_report, write_report
 from kickrender.lock.verify import Verification
-from tests.browser import browser
+from tests.browser import browser, complaints
 from tests.lock.conftest import Edit, lock_in, verify_in
 from tests.lock.texts import BELLS
+from tests.page_checks import accessibility_faults
 
 
 @pytest.fixture
@@ -79,4 +80,6 @@ def test_in_a_browser_before_and_after_play_in_turn(
         switch.click()
         assert switch.get_attribute("aria-pressed") == "false"
         assert chrome.execute_script("return [...document.querySelectorAll('audio')].every((sound) => sound.paused)")
-        assert [entry for entry in chrome.get_log("browser") if entry["level"] == "SEVERE"] == []
+        for width, scheme in ((1200, "light"), (390, "dark")):
+            assert accessibility_faults(chrome, None, width, scheme) == []
+        assert complaints(chrome) == []
