@@ -24,26 +24,44 @@ _SHOWN = {
 
 
 @click.command()
-@click.argument("sides", nargs=-1, required=True, metavar="SIDE SIDE...")
-@click.option("--out", type=click.Path(path_type=Path), required=True, metavar="DIR", help="Folder for all files.")
+@click.argument("sides", nargs=-1, metavar="SIDE SIDE...")
+@click.option("--out", type=click.Path(path_type=Path), metavar="DIR", help="Folder for all files.")
 @set_option
 @click.option("--rate", metavar="HZ", help="Samples per second.  [default: 48000]")
 @click.option("--length", metavar="SECONDS", help="Common length.  [default: until the longest has died away]")
+@click.option("--trials", type=int, help="Trials of the blind listening page.  [default: 16]")
+@click.option("--pool", is_flag=True, help="Take the arguments as results of a blind page, and count them together.")
 @json_option
 def compare(
-    sides: tuple[str, ...], out: Path, settings: tuple[str, ...], rate: str | None, length: str | None, as_json: bool
+    sides: tuple[str, ...],
+    out: Path | None,
+    settings: tuple[str, ...],
+    rate: str | None,
+    length: str | None,
+    trials: int | None,
+    pool: bool,
+    as_json: bool,
 ) -> None:
-    """Compare circuits or settings: sounds matched in loudness and aligned, numbers, pictures, residual.
+    """Compare circuits or settings: sounds matched in loudness and aligned, numbers, pictures, residual, blind page.
 
     A SIDE is a circuit, with settings of its own after it, all in quotes. --set turns something on every side. Every
-    further side is held against the first.
+    further side is held against the first. The blind listening pages (listen-1-2.html ...) open in a browser, with no
+    network; what they save can be pooled.
 
     \b
     Examples:
       kickrender compare bridged-t twin-t --out resonators
       kickrender compare bridged-t "bridged-t R_shape=12k" --set drive=0.8 --out shaper
       kickrender compare "bridged-t decay=0.3" "bridged-t decay=0.6" "bridged-t decay=0.9" --out decays
+      kickrender compare --pool results/*.json
     """
+    if pool:
+        _pool(sides, as_json)
+        return
+    if not sides:
+        raise click.UsageError("Missing argument 'SIDE SIDE...'.")
+    if out is None:
+        raise click.UsageError("Missing option '--out'.")
     from kickrender.sound.options import read_options
 
     options = read_options({"rate": rate, "length": length}, place=lambda name: f"--{name}")
@@ -52,16 +70,33 @@ def compare(
 
     read = [read_side(text, common, f"side '{text}'") for text in sides]
     ready_solver()
+    from kickrender.study.blind import DEFAULT_TRIALS
     from kickrender.study.compare import compare as compare_sides
     from kickrender.study.compare import write_comparison
 
     comparison = compare_sides(read, options)
-    names = write_comparison(comparison, out)
+    names = write_comparison(comparison, out, DEFAULT_TRIALS if trials is None else trials)
     if as_json:
         print_json(comparison.facts)
     else:
         _print(comparison.facts)
     note(f"{out}: {len(names)} files")
+
+
+def _pool(paths: tuple[str, ...], as_json: bool) -> None:
+    """Results of blind listening pages, counted together."""
+    from dataclasses import asdict
+
+    from kickrender.study.pool import pool_results
+
+    pooled = pool_results(paths)
+    if as_json:
+        print_json(asdict(pooled))
+        return
+    click.echo(f"{pooled.labels[0]} against {pooled.labels[1]}: {pooled.sittings} sittings")
+    click.echo(f"{pooled.correct} of {pooled.trials} right; by guessing, so many or more: p = {pooled.p_value:.4g}")
+    rows = [(Path(file).name, listener, f"{correct}/{trials}") for file, listener, correct, trials in pooled.each]
+    print_table("Each sitting", ("file", "listener", "right"), rows)
 
 
 def _print(facts: dict[str, Any]) -> None:

@@ -17,6 +17,7 @@ from kickrender.sound.options import SoundOptions
 from kickrender.sound.sidecar import check_ours, json_bytes
 from kickrender.sound.wav import pcm_sha256, write_wav
 from kickrender.study import pictures
+from kickrender.study.blind import DEFAULT_TRIALS, BlindSound, blind_page
 from kickrender.study.differences import measurement_differences, netlist_difference, null_residual
 from kickrender.study.sides import Heard, Side, hear_sides
 
@@ -72,14 +73,19 @@ def compare(sides: Sequence[Side], options: SoundOptions | None = None) -> Compa
     return Comparison(tuple(heard), facts)
 
 
-def write_comparison(comparison: Comparison, folder: Path) -> list[str]:
-    """Write the sounds, the residuals, the pictures and compare.json into `folder`; returns the files' names.
+def write_comparison(comparison: Comparison, folder: Path, trials: int = DEFAULT_TRIALS) -> list[str]:
+    """Write sounds, residuals, pictures, blind listening pages and compare.json into `folder`; returns their names.
+
+    trials : of each blind listening page; one page for every side that differs from the first.
 
     Raises
     ------
+    InputError
+        If the number of trials is out of range.
     WriteError
         If the folder cannot be made or written, or its compare.json is somebody else's.
     """
+    pages = _blind_pages(comparison, trials)
     try:
         folder.mkdir(parents=True, exist_ok=True)
     except OSError as error:
@@ -114,8 +120,29 @@ def write_comparison(comparison: Comparison, folder: Path) -> list[str]:
         pictures.spectra(lower, residuals, rate_hz)
 
     names += pictures.save_figure("residual", folder, residual_figure, width=8.0, height=6.5)
+    for number, page in pages:
+        names.append(page_name(number))
+        write_whole(folder / names[-1], page)
     write_whole(folder / JSON_NAME, json_bytes(comparison.facts))
     return [*names, JSON_NAME]
+
+
+def _blind_pages(comparison: Comparison, trials: int) -> list[tuple[int, bytes]]:
+    """A page for every side against the first, by its number; none where the sounds are the same."""
+    sounds = [
+        BlindSound(side.samples, side.rate_hz, side.side.label, facts["pcm_sha256"])
+        for side, facts in zip(comparison.heard, comparison.facts["sides"], strict=True)
+    ]
+    return [
+        (number, blind_page([sounds[0], sound], trials, f"1 or {number}?", place="--trials"))
+        for number, sound in enumerate(sounds[1:], 2)
+        if sound.digest != sounds[0].digest
+    ]
+
+
+def page_name(number: int) -> str:
+    """File name of the blind listening page of a side against the first."""
+    return f"listen-1-{number}.html"
 
 
 def sound_name(number: int, side: Heard) -> str:

@@ -89,6 +89,29 @@ def test_files_and_json(tmp_path):
     assert first == {name: (tmp_path / name).read_bytes() for name in names}
 
 
+def test_a_blind_page_for_every_other_side(tmp_path):
+    comparison = compare([side("bridged-t"), side("bridged-t decay=0.6"), side("bridged-t")], SHORT)
+    names = write_comparison(comparison, tmp_path, trials=12)
+    assert [name for name in names if name.endswith(".html")] == ["listen-1-2.html"]  # the third is the first again
+    page = (tmp_path / "listen-1-2.html").read_text()
+    for facts in comparison.facts["sides"][:2]:
+        assert facts["pcm_sha256"] in page
+
+
+def test_too_many_trials_write_nothing(tmp_path, capsys):
+    arguments = ["compare", "bridged-t", "twin-t", "--length", "0.1", "--out", str(tmp_path / "out")]
+    assert main([*arguments, "--trials", "100000"]) == 2
+    assert "trials" in capsys.readouterr().err
+    assert not (tmp_path / "out").exists()
+
+
+def test_pooling_takes_results_only(tmp_path, capsys):
+    path = tmp_path / "r.json"
+    path.write_text("{}")
+    assert main(["compare", "--pool", str(path)]) == 2
+    assert "a result saved by a blind listening page" in capsys.readouterr().err
+
+
 def test_a_silent_side_says_so():
     with pytest.raises(MeasurementError, match="'bridged-t gate=0V' is silent"):
         compare([side("bridged-t"), side("bridged-t gate=0V")], SHORT)
