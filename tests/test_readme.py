@@ -12,7 +12,7 @@ from kickrender.sound.render import Take, hear_each
 
 ROOT = Path(__file__).resolve().parents[1]
 README = (ROOT / "README.md").read_text()
-CIRCUIT, PACK, BLOCKS = re.findall(r"```toml\n(.*?)```", README, re.DOTALL)
+CIRCUIT, PACK, BLOCKS, BY_EAR = re.findall(r"```toml\n(.*?)```", README, re.DOTALL)
 
 
 def test_the_circuit_file_shown_sounds() -> None:
@@ -29,6 +29,13 @@ def test_the_pack_file_shown_is_the_shipped_one_and_takes_blocks() -> None:
     assert [hit.name for hit in shown.hits] == [hit.name for hit in shipped.hits]
     template = PACK.replace("{pitch}_", "{pitch}_{drop-depth}_").replace('name = "{circuit}', 'name = "{number}')
     assert len(plan_pack(read_pack_text(template.replace("_{drop-depth}", "") + BLOCKS)).hits) == 27 * 2 + 27
+
+
+def test_the_pack_by_ear_plans() -> None:
+    hits = plan_pack(read_pack_text(BY_EAR)).hits
+    assert [hit.name for hit in hits][:3] == ["F1/1-1", "F1/1-2", "F1/2-1"]
+    assert len(hits) == 5 * 3 * 2
+    assert all(hit.goals["pitch"]["control"] == "pitch" for hit in hits)
 
 
 def test_every_command_is_described() -> None:
