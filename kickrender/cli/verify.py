@@ -23,7 +23,7 @@ from kickrender.errors import Fault, InputError
     "limits",
     metavar="NAME=VALUE",
     multiple=True,
-    help="A limit of the inaudible: cents, brightness (cents), level, null (dB), time, length (ms), offset (dBFS).",
+    help="A limit of the inaudible: pitch, brightness (cents), level, null (dB), time, length (ms), offset (dBFS).",
 )
 @click.option("--jobs", metavar="N", help="Worker processes.  [default: one per core]")
 @json_option
@@ -95,6 +95,6 @@ def _pairs(texts: tuple[str, ...]) -> dict[str, str]:
     for text in texts:
         name, _, value = (piece.strip() for piece in text.partition("="))
         if not name or not value:
-            raise InputError(Fault("--limit", f"'{text}'", "NAME=VALUE, for instance cents=2"))
+            raise InputError(Fault("--limit", f"'{text}'", "NAME=VALUE, for instance pitch=2"))
         pairs[name] = value
     return pairs

@@ -1,6 +1,6 @@
 """How far a sound moved: differences of its measurements, the null residual, and the limits below which nobody hears.
 
-    cents        start and settled pitch                               1200 log2(after / before)
+    pitch        at the start and settled                              cents, 1200 log2(after / before)
     brightness   spectral centroid, in cents too
     level        peak, true peak, momentary and integrated loudness    dB
     time         decay, attack                                         ms
@@ -66,8 +66,8 @@ class Measure:
 
 MEASURES: Mapping[str, Measure] = MappingProxyType(
     {
-        "settled_hz": Measure("settled pitch", "cents", "cents", _cents, 2),
-        "start_hz": Measure("start pitch", "cents", "cents", _cents, 2),
+        "settled_hz": Measure("settled pitch", "cents", "pitch", _cents, 2),
+        "start_hz": Measure("start pitch", "cents", "pitch", _cents, 2),
         "decay_s": Measure("decay", "ms", "time", _milliseconds, 3),
         "attack_s": Measure("attack", "ms", "time", _milliseconds, 3),
         "length_s": Measure("length", "ms", "length", _milliseconds, 3),
@@ -86,7 +86,7 @@ NULL = Measure("null residual", "dB", "null", _difference, 1)
 class Limits:
     """Below all of these a change is called inaudible. [cent, cent, dB, ms, ms, dBFS, dB]"""
 
-    cents: float = 1.0
+    pitch: float = 1.0
     brightness: float = 10.0
     level: float = 0.05
     time: float = 2.0
@@ -96,7 +96,7 @@ class Limits:
 
 
 LIMIT_UNITS = {
-    "cents": "cents",
+    "pitch": "cents",
     "brightness": "cents",
     "level": "dB",
     "time": "ms",

@@ -71,8 +71,8 @@ def test_tolerance_lets_the_inaudible_pass_and_limits_can_be_set(run: Run, edit:
     edit("bell.toml", '"1u"', '"1.0005u"')  # 0.43 cents
     assert run("verify", "bells.toml", "--jobs", "1")[0] == 1
     assert run("verify", "bells.toml", "--jobs", "1", "--tolerance")[0] == 0
-    assert run("verify", "bells.toml", "--jobs", "1", "--tolerance", "--limit", "cents=0.4")[0] == 1
-    assert run("verify", "bells.toml", "--jobs", "1", "--limit", "cents=100")[0] == 1
+    assert run("verify", "bells.toml", "--jobs", "1", "--tolerance", "--limit", "pitch=0.4")[0] == 1
+    assert run("verify", "bells.toml", "--jobs", "1", "--limit", "pitch=100")[0] == 1
 
 
 def test_with_kept_renders_the_null_residual_decides_too(run: Run, edit: Edit) -> None:
@@ -89,10 +89,10 @@ def test_with_kept_renders_the_null_residual_decides_too(run: Run, edit: Edit) -
             ("verify", "bells.toml"),
             "bells.lock: no such lock file; allowed: a file made by `kickrender lock bells",
         ),
-        (("verify", "bells.toml", "--limit", "cent=1"), "unknown limit 'cent'; allowed: cents (cents), brightness"),
-        (("verify", "bells.toml", "--limit", "cents"), "--limit: 'cents'; allowed: NAME=VALUE"),
-        (("verify", "bells.toml", "--limit", "cents=few"), "--limit: cents: found 'few'; allowed: a number of cents"),
-        (("verify", "bells.toml", "--limit", "cents=-1"), "--limit: cents: -1 is below 0; allowed: 0 cents or more"),
+        (("verify", "bells.toml", "--limit", "pich=1"), "unknown limit 'pich'; allowed: pitch (cents), brightness"),
+        (("verify", "bells.toml", "--limit", "pitch"), "--limit: 'pitch'; allowed: NAME=VALUE"),
+        (("verify", "bells.toml", "--limit", "pitch=few"), "--limit: pitch: found 'few'; allowed: a number of cents"),
+        (("verify", "bells.toml", "--limit", "pitch=-1"), "--limit: pitch: -1 is below 0; allowed: 0 cents or more"),
         (("verify", "bels.toml"), "bels.toml"),
         (("lock", "bells.toml", "--jobs", "0"), "--jobs: found '0'"),
         (("lock", "bells.toml", "--lock", "bell.toml"), "bell.toml: exists and is no lock file of kickrender's"),

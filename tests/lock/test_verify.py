@@ -94,8 +94,17 @@ def test_a_model_is_named_with_its_parts(folder: Path, edit: Edit) -> None:
     assert str(by_name(found)["gong/10k-2V"].causes[0]) == (
         "models: model silicon (D1) saturation_current 2.5nA -> 2.6nA (+4 %)"
     )
-    # The diode only loads the gate, which nothing can move: another recipe, the same samples.
-    assert by_name(found)["gong/10k-2V"].same_bytes
+
+
+def test_another_recipe_of_the_same_samples_passes_with_tolerance_only(folder: Path, edit: Edit) -> None:
+    lock_in(folder)
+    edit("gong.toml", 'to = "5V"', 'to = "6V"')
+    found = verify_in(folder)
+    assert statuses(found) == {RECIPE: set(GONGS), SAME: set(BELLS)}
+    verdict = by_name(found)["gong/10k-2V"]
+    assert [str(cause) for cause in verdict.causes] == ["circuit: control accent high 5 -> 6 (+20 %)"]
+    assert verdict.same_bytes
+    assert "the same bytes" in full_text(verdict)
     assert found.passes(tolerance=True)
     assert not found.passes()
 
