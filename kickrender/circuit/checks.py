@@ -125,7 +125,11 @@ def _order_faults(wiring: Wiring) -> list[Fault]:
 
 def _output_faults(wiring: Wiring) -> list[Fault]:
     net = wiring.output
-    if net is None or net in wiring.touches or net in wiring.held:
+    if net in wiring.held:
+        return [
+            Fault(wiring.place("output", "net"), f"net '{net}' is held or driven from outside", "a net to solve for")
+        ]
+    if net is None or net in wiring.touches:
         return []
     known = [*wiring.touches, *wiring.held]
     return [Fault(wiring.place("output", "net"), f"no part touches net '{net}'", "", nearest_name(net, known))]
