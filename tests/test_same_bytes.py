@@ -15,7 +15,7 @@ import pytest
 from tests.same_bytes import hits, lone
 
 ROOT = Path(__file__).parents[1]
-pytestmark = [pytest.mark.slow, pytest.mark.xdist_group("same bytes")]
+pytestmark = pytest.mark.slow
 
 
 def in_a_process(*arguments: str, **variables: str) -> dict[str, str]:

@@ -163,14 +163,14 @@ from kickrender.errors import SolveError
 from tests.engine.test_rest import CIRCUITS, currents
 mode, names = sys.argv[1], sys.argv[2:]
 newton, set_sources = rest._newton, rest._set_sources
-def failing_newton(code, state, matrix, coefficients, per_pseudo_step, most):
+def failing_newton(code, state, matrix, coefficients, per_pseudo_step, *others):
     if per_pseudo_step:
         calls["pseudo"] += 1
     else:
         calls["newton"] += 1
         if mode == "never" or calls["newton"] == 1 or (mode == "pseudo" and not calls["pseudo"]):
             return False, 1
-    return newton(code, state, matrix, coefficients, per_pseudo_step, most)
+    return newton(code, state, matrix, coefficients, per_pseudo_step, *others)
 def counting_sources(code, hit_numbers, inputs, level, *others):
     calls["scaled"] += level != 1.0
     set_sources(code, hit_numbers, inputs, level, *others)
