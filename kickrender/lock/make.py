@@ -16,7 +16,7 @@ from kickrender.pack.plan import plan_pack
 from kickrender.pack.read import read_pack
 from kickrender.pack.records import Pack, Plan
 from kickrender.pack.workers import Progress
-from kickrender.sound.files import write_whole
+from kickrender.sound.files import sweep_unfinished, write_whole
 
 ENDING = ".lock"
 AUDIO_ENDING = ".audio"
@@ -68,6 +68,8 @@ def write_lock(
     """
     old = check_target(path)
     folder = path.with_suffix(AUDIO_ENDING)
+    if audio and folder.is_dir():
+        sweep_unfinished(folder)
     lock = replace(lock_of(plan, pack), audio=folder.name if audio else "", path=path)
     unlocked = replace(lock, audio="")
     hits, failed = {}, {}

@@ -67,6 +67,8 @@ def test_killed_at_any_moment_it_leaves_the_old_file_or_the_new(folder: Path, ed
             break
         assert lock.audio_folder
     assert killed
+    lock_in(folder, audio=True)
+    assert not list((folder / "bells.audio").rglob("*.part"))
 
 
 def test_a_write_that_fails_leaves_the_old_file_whole(
