@@ -105,9 +105,16 @@ def test_other_settings_count(bell: Circuit) -> None:
     assert_met([wish(bell, {"L1": "0.7"}, pitch=("notes", "C2")), wish(bell, {"damp": 30}, pitch=("notes", "C2"))])
 
 
-def test_settings_far_from_the_circuits_own_are_surveyed_again(bell: Circuit) -> None:
-    """L of a tenth moves every pitch by a factor of 3: the first survey misleads, the second does not."""
+def test_settings_far_from_the_circuits_own_are_met(bell: Circuit) -> None:
+    """L of a tenth moves every pitch by a factor of 3, and the shared survey misleads."""
     assert_met([wish(bell, {"L1": "0.1"}, pitch=("hertz", hz), decay=("seconds", 0.1)) for hz in (200, 400)])
+
+
+def test_a_circuit_that_is_silent_by_itself_is_surveyed_as_it_is_set() -> None:
+    """Its own starts give nothing to measure: only a second survey, under the wish's settings, finds a start."""
+    force = '[controls.force]\ndrives = "gate"\nfrom = "0V"\nto = "1V"\nstart = "0V"\n[goals]'
+    circuit = read_circuit_text(BELL.replace("[goals]", force), "bell.toml")
+    assert_met([wish(circuit, {"force": "1V"}, pitch=("notes", "C2"))])
 
 
 def test_an_answer_depends_on_nothing_but_its_wish(bell: Circuit) -> None:
