@@ -12,7 +12,7 @@ from dataclasses import dataclass, field
 from pathlib import Path
 
 from kickrender.circuit import Circuit
-from kickrender.pack.records import Hit, Plan
+from kickrender.pack.records import Hit, Plan, Tags
 from kickrender.sound.level import Gain, Level
 from kickrender.sound.options import SoundOptions
 
@@ -35,6 +35,7 @@ class Batch:
     folder: Path
     hits: tuple[Hit, ...]
     gains: Mapping[int, Gain] = field(default_factory=dict)
+    tags: Tags = Tags()
 
 
 def groups_of(hits: Iterable[Hit]) -> list[tuple[Hit, ...]]:
@@ -78,4 +79,4 @@ def batches_of(
 def _batch(plan: Plan, folder: Path, hits: Sequence[Hit], gains: Mapping[int, Gain]) -> Batch:
     circuits = {name: plan.circuits[name] for name in dict.fromkeys(hit.circuit for hit in hits)}
     gains = {hit.group: gains[hit.group] for hit in hits if hit.group in gains}
-    return Batch(plan.title, circuits, plan.options, plan.level, plan.together, folder, tuple(hits), gains)
+    return Batch(plan.title, circuits, plan.options, plan.level, plan.together, folder, tuple(hits), gains, plan.tags)

@@ -81,6 +81,7 @@ def plan_pack(pack: Pack) -> Plan:
         options=pack.options,
         level=pack.level,
         together=together,
+        tags=pack.tags,
         hits=tuple(_hits(pack, circuits, drafts, names)),
     )
 

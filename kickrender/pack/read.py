@@ -1,10 +1,10 @@
 """Reads pack files: from a shipped name, a path or a text to a checked pack, reporting every fault at once.
 
 A pack file says which circuit to strike, along which axes to walk, and how the files are to sound and be called:
-`title`, `about`, `circuit` (a name or path, or a list of them), `[sound]`, `[level]`, `[files]`, and what `read_block`
-reads. With `[[blocks]]` it holds several designs: each block may have a `circuit`, `axes` and `fixed` of its own, which
-add to or replace what the whole file says, and a `design`, `layers`, `takes` and `hits` of its own in place of the
-file's.
+`title`, `about`, `circuit` (a name or path, or a list of them), `[sound]`, `[level]`, `[files]`, `[tags]`, and what
+`read_block` reads. With `[[blocks]]` it holds several designs: each block may have a `circuit`, `axes` and `fixed` of
+its own, which add to or replace what the whole file says, and a `design`, `layers`, `takes` and `hits` of its own in
+place of the file's.
 """
 
 from __future__ import annotations
@@ -21,10 +21,11 @@ from kickrender.errors import InputError, nearest_name
 from kickrender.pack.read_block import BLOCK_KEYS, BlockReading
 from kickrender.pack.reading import Reading, Where
 from kickrender.pack.records import CIRCUIT_AXIS, Block, Pack
+from kickrender.pack.tags import read_tags
 from kickrender.sound.level import Level, read_level
 from kickrender.sound.options import SoundOptions, read_options
 
-KEYS = ("title", "about", "sound", "level", "files", *BLOCK_KEYS, "blocks")
+KEYS = ("title", "about", "sound", "level", "files", "tags", *BLOCK_KEYS, "blocks")
 FILE_KEYS = ("name",)
 
 
@@ -63,6 +64,7 @@ class _Reader(Reading):
         level, together = self.level()
         template = self.template()
         blocks = self.blocks()
+        tags = read_tags(self)
         for name in together:
             if name not in self.walked:
                 allowed, nearest = ", ".join(self.walked), nearest_name(name, self.walked)
@@ -79,6 +81,7 @@ class _Reader(Reading):
             together=together,
             template=template,
             template_place=self.at("files", "name"),
+            tags=tags,
         )
 
     def level(self) -> tuple[Level | None, tuple[str, ...]]:

@@ -115,6 +115,17 @@ class Block:
 
 
 @dataclass(frozen=True)
+class Tags:
+    """What every file of a pack says of its making; empty means nothing. date : yyyy-mm-dd."""
+
+    artist: str = ""
+    genre: str = ""
+    comment: str = ""
+    copyright: str = ""
+    date: str = ""
+
+
+@dataclass(frozen=True)
 class Pack:
     """A pack file as its author wrote it, every key known and every circuit read.
 
@@ -133,6 +144,7 @@ class Pack:
     together: tuple[str, ...]
     template: str
     template_place: str
+    tags: Tags = Tags()
 
 
 @dataclass(frozen=True)
@@ -194,3 +206,4 @@ class Plan:
     together: tuple[str, ...]
     hits: tuple[Hit, ...]
     left_out: tuple[Hit, ...] = ()
+    tags: Tags = Tags()

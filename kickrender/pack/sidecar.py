@@ -3,12 +3,14 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import asdict
 from pathlib import Path
 from typing import Any
 
 from kickrender.errors import WriteError
 from kickrender.pack.batches import Batch
-from kickrender.pack.records import Hit, Plan
+from kickrender.pack.records import Hit, Plan, Tags
+from kickrender.pack.tags import chunks_of
 from kickrender.sound.render import Sound, write_pair
 from kickrender.sound.sidecar import read_sidecar
 from kickrender.sound.wav import pcm_digest_of_file
@@ -37,14 +39,14 @@ def write_hit(batch: Batch, hit: Hit, sound: Sound) -> None:
         wav.parent.mkdir(parents=True, exist_ok=True)
     except OSError as error:
         raise WriteError(f"{wav.parent}: cannot be made: {error.strerror}") from None
-    write_pair(wav, sound, sidecar_of(batch, hit, sound))
+    write_pair(wav, sound, sidecar_of(batch, hit, sound), chunks_of(batch.tags, batch.title, hit, sound))
 
 
 def sidecar_of(batch: Batch, hit: Hit, sound: Sound) -> dict[str, Any]:
     """What the sidecar says: the sound's facts, and which hit of which pack it is."""
     return {
         **sound.facts,
-        "pack": _place(batch.title, batch.together, hit),
+        "pack": _place(batch.title, batch.together, batch.tags, hit),
         "recipe_digest": hit.recipe_digest,
     }
 
@@ -54,12 +56,12 @@ def is_done(plan: Plan, folder: Path, hit: Hit) -> bool:
     facts = read_sidecar(json_path(folder, hit.name))
     if facts is None or facts.get("recipe_digest") != hit.recipe_digest:
         return False
-    if facts.get("pack") != _place(plan.title, plan.together, hit):
+    if facts.get("pack") != _place(plan.title, plan.together, plan.tags, hit):
         return False
     return pcm_digest_of_file(wav_path(folder, hit.name)) == facts.get("pcm", {}).get("sha256")
 
 
-def _place(title: str, together: Sequence[str], hit: Hit) -> dict[str, Any]:
+def _place(title: str, together: Sequence[str], tags: Tags, hit: Hit) -> dict[str, Any]:
     """Which hit of a pack this is, as a sidecar says it."""
     place: dict[str, Any] = {
         "title": title,
@@ -67,6 +69,8 @@ def _place(title: str, together: Sequence[str], hit: Hit) -> dict[str, Any]:
         "axes": dict(hit.axes),
         "shares_gain_along": list(together),
     }
+    if tags != Tags():
+        place["tags"] = {key: value for key, value in asdict(tags).items() if value}
     if hit.goals:
         place["goals"] = {kind: dict(facts) for kind, facts in hit.goals.items()}
     if hit.velocity:

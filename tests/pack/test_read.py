@@ -57,7 +57,7 @@ def test_blocks_add_to_and_replace_what_the_file_says(folder: Path) -> None:
 @pytest.mark.parametrize(
     ("old", "new", "faults"),
     [
-        ("[axes]", "[axis]", ["p.toml:12, axis: unknown key 'axis'; allowed: title, about, sound, level, files, "
+        ("[axes]", "[axis]", ["p.toml:12, axis: unknown key 'axis'; allowed: title, about, sound, level, files, tags, "
                               "circuit, axes, fixed, design, layers, takes, hits, blocks; did you mean 'axes'?",
                               "p.toml:11, level.together: no axis 'accent'; allowed: circuit"]),
         ('title = "Plain pack"', "", ["p.toml, title: key 'title' is missing; allowed: a text in quotes"]),

@@ -5,6 +5,7 @@ import json
 import math
 import random
 import shutil
+import warnings
 import wave
 from collections.abc import Callable
 from dataclasses import replace
@@ -80,7 +81,9 @@ def test_every_hit_has_a_file_that_others_open(rendered: Rendered) -> None:
         with wave.open(str(path)) as file:
             assert (file.getnchannels(), file.getsampwidth(), file.getframerate()) == (1, 2, 44100)
             assert file.getnframes() == len(samples)
-        assert (wavfile.read(path)[1] == samples).all()
+        with warnings.catch_warnings():
+            warnings.simplefilter("ignore", wavfile.WavFileWarning)  # of chunks that scipy does not know
+            assert (wavfile.read(path)[1] == samples).all()
         assert abs(samples).max() > 1000
         assert samples[-1] in (-1, 0, 1)  # faded to zero; what is left is dither
 
@@ -183,7 +186,7 @@ def _remove(out: Path) -> None:
 
 def _flip(out: Path) -> None:
     data = bytearray((out / "0.1/3V.wav").read_bytes())
-    data[200] ^= 1
+    data[-200] ^= 1
     (out / "0.1/3V.wav").write_bytes(data)
 
 

@@ -91,7 +91,7 @@ def test_after_a_kill_a_rerun_finishes_and_no_worker_stays(jobs: str, many: Path
     assert_a_rerun_finishes(many, out)
 
 
-@pytest.mark.parametrize(("room", "file"), [(500, "1V.wav"), (2000, "1V.json")])
+@pytest.mark.parametrize(("room", "file"), [(500, "1V.wav"), (3000, "1V.json")])
 def test_a_full_disk_is_one_message_and_leaves_nothing_half_written(room: int, file: str, many: Path) -> None:
     out = many.parent / "out"
     program = (
