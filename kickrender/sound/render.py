@@ -30,7 +30,7 @@ from kickrender.sound.measure import DECIBEL_DIGITS, OFFSET_DIGITS, Measurements
 from kickrender.sound.options import SoundOptions
 from kickrender.sound.recipe import dither_seed, hit_recipe, recipe_digest
 from kickrender.sound.sidecar import check_ours, json_bytes, sound_facts
-from kickrender.sound.wav import pcm_sha256, write_wav
+from kickrender.sound.wav import Chunk, pcm_sha256, write_wav
 
 Floats = NDArray[np.float64]
 Settings = Mapping[str, float | str | bool]
@@ -102,7 +102,7 @@ class Sound:
         return ", ".join(pieces)
 
 
-def write_pair(path: Path, sound: Sound, facts: Mapping[str, Any]) -> None:
+def write_pair(path: Path, sound: Sound, facts: Mapping[str, Any], chunks: Sequence[Chunk] = ()) -> None:
     """Write a sound's WAV file and then its sidecar beside it: both, or neither.
 
     Raises
@@ -111,7 +111,7 @@ def write_pair(path: Path, sound: Sound, facts: Mapping[str, Any]) -> None:
     """
     sidecar = path.parent / f"{path.name.removesuffix(path.suffix)}.json"
     check_ours(sidecar)
-    write_wav(path, sound.pcm, sound.rate, sound.facts["sound"]["format"])
+    write_wav(path, sound.pcm, sound.rate, sound.facts["sound"]["format"], chunks)
     try:
         write_whole(sidecar, json_bytes(facts))
     except WriteError:
