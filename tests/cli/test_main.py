@@ -9,6 +9,7 @@ import click
 import pytest
 
 from kickrender import __version__
+from kickrender.circuit import shipped_circuits
 from kickrender.cli import main as cli
 from kickrender.errors import SolveError
 from tests.cli.conftest import Run
@@ -66,7 +67,8 @@ def test_the_library_loads_nothing_heavy() -> None:
         ("pack x.toml --dry-run", "kickrender: x.toml: cannot read x.toml: No such file or directory; allowed: a pack "
                                   "file that can be read"),
         ("show brigded-t", "kickrender: circuit 'brigded-t': no circuit 'brigded-t'; allowed: a shipped circuit "
-                           "(bridged-t, twin-t) or a path that ends in .toml; did you mean 'bridged-t'?"),
+                           f"({', '.join(shipped_circuits())}) or a path that ends in .toml; did you mean "
+                           "'bridged-t'?"),
         ("show voice.toml --set ton=1", "kickrender: --set ton: unknown setting 'ton'; allowed: a control (tone, "
                                         "accent), a part, an input or temperature; did you mean 'tone'?"),
         ("show voice.toml --set tone", "kickrender: --set: 'tone'; allowed: NAME=VALUE, for instance decay=0.7"),

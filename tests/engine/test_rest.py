@@ -86,7 +86,7 @@ CIRCUITS = {
 def currents(chosen, state: dict[str, float]) -> np.ndarray:
     """F of the second writing at a state over its row's largest slope: how far every net is from balance. [V]"""
     independent = SecondWriting(chosen)
-    names = {name: name.replace(":inner", ".junction").replace(":current", ".current") for name in independent.names}
+    names = {name: name.replace(":inner", ".junction").replace(":", ".") for name in independent.names}
     y = np.array([state[names[name]] for name in independent.names])
     out = np.zeros(independent.size)
     independent.residual(0.0, y, np.zeros(independent.size), out)

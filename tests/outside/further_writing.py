@@ -76,6 +76,7 @@ LAWS: Mapping[str, Callable[[ResolvedPart, Volts, float, float], Currents]] = {
     "ota": ota,
 }
 KINDS = (*LAWS, "transformer", "controlled-voltage", "controlled-current")
+CURRENTS = ("primary_current", "secondary_current")
 STORES = (("gate_source_capacitance", "gate", "source"), ("gate_drain_capacitance", "gate", "drain"))
 
 
@@ -84,7 +85,7 @@ def names(parts: list[ResolvedPart]) -> list[str]:
     found = [f"{part.name}:inner" for part in parts if part.kind == "zener" and _series(part)]
     for part in parts:
         if part.kind == "transformer":
-            currents = ("primary", "secondary") if part.values["coupling"] < 1.0 else ("flux",)
+            currents = CURRENTS if part.values["coupling"] < 1.0 else ("magnetising_current",)
             found += [f"{part.name}:{current}" for current in currents]
     return found
 
@@ -112,6 +113,17 @@ class Further:
             (part, LAWS[part.kind], self._columns(part), saturation(part)) for part in parts if part.kind in LAWS
         ]
         self.spread = np.eye(size)  # how the current laws are added up
+
+    def guess(self, volts: np.ndarray) -> np.ndarray:
+        """Where a search for the rest state may begin: bias terminals near the rail they stand on.
+
+        volts : of every place, the unknown ones 0; shape (width,). Returns those of the unknowns.
+        """
+        start = volts[: self.size].copy()
+        for part, _, columns, _ in self.devices:
+            if part.kind == "ota" and columns["bias"] < self.size:
+                start[columns["bias"]] = volts[columns["rail_low"]] + 0.5
+        return start
 
     def _columns(self, part: ResolvedPart) -> dict[str, int]:
         columns = {role: self.place[net] for role, net in part.terminals.items()}
@@ -144,7 +156,7 @@ class Further:
                     conductance[place[net], place[part.terminals["plus"]]] += sign * part.values["transconductance"]
                     conductance[place[net], place[part.terminals["minus"]]] -= sign * part.values["transconductance"]
         elif part.kind == "transformer" and part.values["coupling"] < 1.0:
-            currents = [place[f"{part.name}:{winding}"] for winding in ("primary", "secondary")]
+            currents = [place[f"{part.name}:{current}"] for current in CURRENTS]
             henry = [part.values[f"{winding}_inductance"] for winding in ("primary", "secondary")]
             mutual = part.values["coupling"] * np.sqrt(henry[0] * henry[1])
             for index, winding in enumerate(("primary", "secondary")):
@@ -164,6 +176,7 @@ class Further:
         driven : rows that are no current law any more. matrices : conductance, capacitance, scatter; in place.
         """
         conductance, capacitance, _ = matrices
+        self.spread[driven] = 0.0
         for part in parts:
             nets = {role: self.place[net] for role, net in part.terminals.items()}
             if part.kind == "controlled-voltage":
@@ -198,7 +211,7 @@ class Further:
                 (nets["primary_b"], ratio),
             ):
                 conductance[free, row] += weight
-            flux = self.place[f"{part.name}:flux"]
+            flux = self.place[f"{part.name}:magnetising_current"]
             capacitance[flux, flux] = part.values["primary_inductance"]
             for column, sign in ((nets["primary_a"], 1.0), (nets["primary_b"], -1.0)):
                 conductance[flux, column] -= sign

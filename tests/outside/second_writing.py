@@ -122,23 +122,24 @@ class SecondWriting:
                 known = ("diode", "npn", "pnp", "opamp", *further_writing.KINDS)
                 assert part.kind in known, f"kind '{part.kind}' is not written here"
         self._junctions(diodes, [part for part in parts if part.kind in ("npn", "pnp")], width)
+        self.further = self._further(parts)
         self._opamps([part for part in parts if part.kind == "opamp"], width)
-        self._further(parts)
+        self.further.own_rows(parts, list(self.outputs), (self.conductance, self.capacitance, self.scatter))
         self.start = 0.0  # of the input segment in force
         self._full = np.zeros(width)
         self._full[self.size + 1 : self.size + 1 + len(circuit.nets)] = list(circuit.nets.values())
         self._full_slope = np.zeros(width)
 
-    def _further(self, parts: list[ResolvedPart]) -> None:
-        """Every other kind of part; last, since some take the place of current laws."""
+    def _further(self, parts: list[ResolvedPart]) -> Further:
+        """Every other kind of part, its linear entries stamped."""
 
         def saturation(part: ResolvedPart) -> float:
             return saturation_current_at(self._values(part), "saturation_current", self.circuit.temperature_k)
 
-        self.further = Further(parts, self.place, self.size, self.thermal, saturation)
+        further = Further(parts, self.place, self.size, self.thermal, saturation)
         for part in parts:
-            self.further.stamp(part, self.conductance, self.capacitance)
-        self.further.own_rows(parts, list(self.outputs), (self.conductance, self.capacitance, self.scatter))
+            further.stamp(part, self.conductance, self.capacitance)
+        return further
 
     @staticmethod
     def _values(part: ResolvedPart) -> dict[str, float]:
@@ -310,7 +311,9 @@ class SecondWriting:
     def rest(self) -> np.ndarray:
         """The operating point at the inputs' t = 0 levels, by Newton's method with bounded steps from 0 V. [V]"""
         self.start = 0.0
-        y, out, still = np.zeros(self.size), np.zeros(self.size), np.zeros(self.size)
+        self._known_at(0.0)
+        self._full[: self.size] = 0.0
+        y, out, still = self.further.guess(self._full), np.zeros(self.size), np.zeros(self.size)
         for _ in range(1000):
             self.residual(0.0, y, still, out)
             out -= self.capacitance[:, self.size :] @ self._full_slope[self.size :]  # the inputs do not move yet
@@ -330,7 +333,9 @@ class SecondWriting:
         matrix = self.slopes(time, y)
         inner = self.capacitance[:, : self.size]
         rows = 1.0 / np.maximum(np.abs(inner).max(axis=1), np.finfo(float).tiny)
-        rows[np.abs(inner).max(axis=1) == 0.0] = 1.0
+        # Rows without a derivative weigh alike as well, or the small ones would drown in their mixtures below.
+        without = np.abs(inner).max(axis=1) == 0.0
+        rows[without] = 1.0 / np.abs(matrix[without, : self.size]).max(axis=1)
         left, values, _ = np.linalg.svd(inner * rows[:, None])
         moving = values > 1e-10 * values[0]
         static = left.T[~moving] * rows

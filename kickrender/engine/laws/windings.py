@@ -27,7 +27,7 @@ from math import sqrt
 from kickrender.circuit.records import ResolvedPart
 from kickrender.engine.stamps import Stamps
 
-RATIO_TIME_S = 1e-4  # tau; only its rounding could ever be heard, and not to need that it lies among audio's times
+RATIO_TIME_S = 1e-12  # tau; far from any other time constant, so that its pole is never taken for one of the circuit
 
 
 def stamp(part: ResolvedPart, stamps: Stamps) -> None:
