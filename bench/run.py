@@ -1,5 +1,6 @@
-"""Measure everything, print it, and write RESULTS.md: `python -m bench.run [--quick] [--only SECTION ...]`.
+"""Measure everything, print it, and write RESULTS.md: `python -m bench.run [--brief | --quick] [--only SECTION ...]`.
 
+A brief run leaves out what takes the competitors long: ladders above 20 nets, most hard settings, 5,000 hits.
 A quick run takes fewer circuits, shorter hits and fewer repeats, prints, and writes nothing: its figures are no
 results. What stands in RESULTS.md from the heading KEPT on is written by hand and is kept.
 """
@@ -26,6 +27,7 @@ RESULTS = Path(__file__).resolve().parent / "RESULTS.md"
 KEPT = "## What was tried"
 VOICE = "bridged-t"  # the circuit the targets speak of
 DEMO = "night-ferry"
+BRIEF_CASES = (VOICE, f"{VOICE}, hard", "twin-t", "one-transistor", "ladder of 10", "ladder of 20")
 FULL, QUICK = Effort(), Effort(length_s=0.05, repeats=1, limit_s=20.0)
 
 Target = tuple[str, str, str, bool | None]
@@ -37,6 +39,7 @@ class Report:
 
     quick: bool
     effort: Effort
+    brief: bool = False
     text: list[str] = field(default_factory=list)
     targets: list[Target] = field(default_factory=list)
 
@@ -60,6 +63,8 @@ def solver_section(report: Report) -> None:
     cases = [*shipped_cases(), *ladder_cases()]
     if report.quick:
         cases = [case for case in cases if case.name in (VOICE, "ladder of 10", "ladder of 50")]
+    if report.brief:
+        cases = [case for case in cases if case.name in BRIEF_CASES]
     report.say(f"## Beside general-purpose solvers\n\n{_SOLVERS.format(e=report.effort)}")
     found: list[Comparison] = []
     for case in cases:
@@ -132,7 +137,7 @@ def growth_section(report: Report) -> None:
 
 def pack_section(report: Report) -> None:
     """Whole packs."""
-    counts = (8, 32) if report.quick else (50, 500, 5000)
+    counts = (8, 32) if report.quick else (50, 500) if report.brief else (50, 500, 5000)
     report.say("## Whole packs\n\nFrom pack file to manifest, files flushed to disk; Python's start is left out.\n")
     runs = [(DEMO, render_shipped(DEMO, jobs)) for jobs in (1, 2)]
     for count in counts:
@@ -196,9 +201,9 @@ SECTIONS: dict[str, Callable[[Report], None]] = {
 }
 
 
-def run(sections: list[str], *, quick: bool) -> Report:
+def run(sections: list[str], *, quick: bool, brief: bool = False) -> Report:
     """Measure the sections and print them."""
-    report = Report(quick, QUICK if quick else FULL)
+    report = Report(quick, QUICK if quick else FULL, brief)
     for name in sections:
         SECTIONS[name](report)
     report.say("## Targets\n")
@@ -210,12 +215,13 @@ def main(arguments: list[str]) -> None:
     """The command."""
     parser = argparse.ArgumentParser(prog="python -m bench.run", description=__doc__)
     parser.add_argument("--quick", action="store_true", help="print only, with less of everything")
+    parser.add_argument("--brief", action="store_true", help="leave out what takes the competitors long")
     parser.add_argument("--only", nargs="+", choices=SECTIONS, help="print these sections only")
     chosen = parser.parse_args(arguments)
     command = " ".join(["python -m bench.run", *arguments])
     head = f"# Results\n\n{tables.machine(command)}"
     print(head)
-    report = run(chosen.only or list(SECTIONS), quick=chosen.quick)
+    report = run(chosen.only or list(SECTIONS), quick=chosen.quick, brief=chosen.brief)
     if not chosen.quick and not chosen.only:
         RESULTS.write_text("\n".join([head, *report.text, _kept()]).rstrip() + "\n", encoding="utf-8")
 
