@@ -9,10 +9,10 @@ transformer with the magnetising current m = i_1 + N i_2 in L_1:
 
     L_1 dm/dt = v_1,    tau d(v_2 - N v_1)/dt + (v_2 - N v_1) = 0
 
-The second row is the ratio and its own rate in one: with the ratio alone, capacitors across both windings would leave
-i_2 to be found from the derivative of an equation (index 2), which no one-step method of this kind solves; its rate
-alone would lose the ratio at rest. A hit starts at rest, where v_2 = N v_1 holds, so v_2 - N v_1 stays zero whatever
-tau is.
+The second row is the ratio and its own rate in one. With the ratio alone, capacitors across both windings would leave
+i_2 to be found from the derivative of an equation (index 2), for which the method has no order to promise; the rate
+alone would lose the ratio at rest. A hit starts at rest, where v_2 = N v_1 holds, and every stage of a step solves this
+linear row exactly, so that v_2 - N v_1 stays zero and tau drops out of the arithmetic.
 
 Source: the coupled-circuit equations of any textbook; the index reduction follows J. Baumgarte, Stabilization of
 constraints and integrals of motion in dynamical systems, Computer Methods in Applied Mechanics and Engineering 1

@@ -8,6 +8,7 @@ from scipy import linalg, signal
 
 from kickrender.circuit import ResolvedCircuit, read_circuit_text
 from kickrender.engine import poles, rest_state, solve
+from kickrender.engine.linearise import linearised
 
 L_1, L_2 = 0.8, 0.2  # [H], two to one in turns
 N = 0.5
@@ -87,6 +88,21 @@ def test_perfect_coupling_with_capacitors_across_both_windings() -> None:
     assert found == pytest.approx(truth, abs=3e-8)
     assert N * solution.sample(RATE, COUNT, net="a") == pytest.approx(found, abs=1e-13)  # the ratio never drifts
     assert solve(bench(1.0, C_1, C_2), 0.0081).counters["steps"] < 300
+
+
+@pytest.mark.parametrize("parts", [(), (C_1,), (C_2,), (C_1, C_2)], ids=["bare", "first", "second", "both"])
+def test_perfect_coupling_has_index_1(parts: tuple[str, ...]) -> None:
+    """Index 1: with W and N the left and right null spaces of `rates`, W^T `matrix` N is regular.
+
+    Criterion: E. Hairer and G. Wanner, Solving Ordinary Differential Equations II, section VI.1; from memory. Rows are
+    brought to one size first.
+    """
+    linear = linearised(bench(1.0, *parts))
+    rates = linear.rates / np.maximum(np.abs(linear.rates).max(axis=1, keepdims=True), 1e-300)
+    matrix = linear.matrix / np.abs(linear.matrix).max(axis=1, keepdims=True)
+    left, right = linalg.null_space(rates.T), linalg.null_space(rates)
+    assert left.shape[1] == right.shape[1] > 0
+    assert np.linalg.svd(left.T @ matrix @ right, compute_uv=False)[-1] > 1e-6
 
 
 def test_capacitor_from_an_input_straight_to_a_perfect_winding() -> None:
