@@ -7,6 +7,10 @@ it reads a dying sine sharp, so it hears long decays only.
 Reassigned spectrogram: F. Auger, P. Flandrin, IEEE Transactions on Signal Processing 43 (1995). It has no such trouble.
 """
 
+import fcntl
+import tempfile
+from pathlib import Path
+
 import librosa
 import numpy as np
 import pytest
@@ -49,18 +53,21 @@ def averaged_down(samples: np.ndarray) -> np.ndarray:
 
 def by_pyin(samples: np.ndarray, near_hz: float, from_s: float, to_s: float) -> float:
     """Within three semitones of where it should be."""
-    hz, _, _ = librosa.pyin(
-        averaged_down(samples),
-        sr=LOW_RATE_HZ,
-        fmin=near_hz * 2 ** (-3.005 / 12),
-        fmax=near_hz * 2 ** (3 / 12),
-        frame_length=4096,
-        hop_length=HOP,
-        resolution=0.01,
-        max_transition_rate=5,
-        fill_na=None,
-        center=False,
-    )
+    # librosa compiles on first use into one cache for all processes; two test workers at once have crashed there
+    with (Path(tempfile.gettempdir()) / "kickrender-tests-pyin.lock").open("w") as turn:
+        fcntl.flock(turn, fcntl.LOCK_EX)
+        hz, _, _ = librosa.pyin(
+            averaged_down(samples),
+            sr=LOW_RATE_HZ,
+            fmin=near_hz * 2 ** (-3.005 / 12),
+            fmax=near_hz * 2 ** (3 / 12),
+            frame_length=4096,
+            hop_length=HOP,
+            resolution=0.01,
+            max_transition_rate=5,
+            fill_na=None,
+            center=False,
+        )
     return settled(hz, 4096, from_s, to_s)
 
 
