@@ -18,6 +18,7 @@ from kickrender.cli.lock import lock
 from kickrender.cli.pack import pack
 from kickrender.cli.render import render
 from kickrender.cli.show import show
+from kickrender.cli.study import study
 from kickrender.cli.usage import Commands, fault_of
 from kickrender.cli.verify import verify
 from kickrender.errors import KickrenderError
@@ -49,7 +50,7 @@ def kickrender(context: click.Context) -> None:
         click.echo(context.get_help())
 
 
-for command in (list_shipped, show, render, pack, compare, lock, verify):
+for command in (list_shipped, show, render, pack, compare, study, lock, verify):
     kickrender.add_command(command)
 
 

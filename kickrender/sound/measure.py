@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Collection
 from dataclasses import dataclass
 
 import numpy as np
@@ -61,7 +62,12 @@ class Measurements:
     offset: float
 
 
-def measure(samples: Floats, rate_hz: float, concert_pitch_hz: float = CONCERT_PITCH_HZ) -> Measurements:
+def measure(
+    samples: Floats,
+    rate_hz: float,
+    concert_pitch_hz: float = CONCERT_PITCH_HZ,
+    only: Collection[str] | None = None,
+) -> Measurements:
     """Measure one sound.
 
     Parameters
@@ -72,6 +78,8 @@ def measure(samples: Floats, rate_hz: float, concert_pitch_hz: float = CONCERT_P
         [Hz]
     concert_pitch_hz : float, default 440
         A4, for the nearest note. [Hz]
+    only : collection of str, optional
+        Names of the measurements asked for. What would cost time and is not among them stays None.
 
     Raises
     ------
@@ -85,23 +93,26 @@ def measure(samples: Floats, rate_hz: float, concert_pitch_hz: float = CONCERT_P
     peak = max(float(samples.max()), -float(samples.min()))
     if peak < SILENCE:
         return Measurements(length_s=length, offset=0.0)
-    heard = loudness(samples, rate_hz)
-    tone = pitch(samples, rate_hz)
-    settled = None if tone.settled_hz is None else significant(tone.settled_hz)
+
+    def asked(*names: str) -> bool:
+        return only is None or not set(names).isdisjoint(only)
+
+    heard = loudness(samples, rate_hz) if asked("momentary_lufs", "integrated_lufs") else None
+    tone = pitch(samples, rate_hz) if asked("start_hz", "settled_hz", "note", "cents") else None
+    settled = None if tone is None or tone.settled_hz is None else significant(tone.settled_hz)
     note, cents = (None, None) if settled is None else nearest_note(settled, concert_pitch_hz)
-    decay = decay_s(samples, rate_hz)
     return Measurements(
         peak_dbfs=_rounded(decibels(peak), DECIBEL_DIGITS),
-        true_peak_dbtp=_rounded(decibels(true_peak(samples)), DECIBEL_DIGITS),
-        momentary_lufs=_maybe(heard.momentary_lufs, DECIBEL_DIGITS),
-        integrated_lufs=_maybe(heard.integrated_lufs, DECIBEL_DIGITS),
-        start_hz=None if tone.start_hz is None else significant(tone.start_hz),
+        true_peak_dbtp=_rounded(decibels(true_peak(samples)), DECIBEL_DIGITS) if asked("true_peak_dbtp") else None,
+        momentary_lufs=None if heard is None else _maybe(heard.momentary_lufs, DECIBEL_DIGITS),
+        integrated_lufs=None if heard is None else _maybe(heard.integrated_lufs, DECIBEL_DIGITS),
+        start_hz=None if tone is None or tone.start_hz is None else significant(tone.start_hz),
         settled_hz=settled,
         note=note,
         cents=cents,
-        decay_s=_maybe(decay, SECOND_DIGITS),
-        attack_s=_rounded(attack_s(samples, rate_hz), SECOND_DIGITS),
-        centroid_hz=significant(centroid_hz(samples, rate_hz)),
+        decay_s=_maybe(decay_s(samples, rate_hz), SECOND_DIGITS) if asked("decay_s") else None,
+        attack_s=_rounded(attack_s(samples, rate_hz), SECOND_DIGITS) if asked("attack_s") else None,
+        centroid_hz=significant(centroid_hz(samples, rate_hz)) if asked("centroid_hz") else None,
         length_s=length,
         offset=_rounded(offset(samples, rate_hz), OFFSET_DIGITS),
     )

@@ -116,6 +116,25 @@ def test_measuring_does_not_touch_the_samples():
     pitch_track(samples, RATE_HZ)
 
 
+@pytest.mark.parametrize(
+    "names", [["settled_hz"], ["decay_s", "momentary_lufs"], ["true_peak_dbtp"], ["attack_s", "centroid_hz"], []]
+)
+def test_what_is_not_asked_for_is_left_out(names):
+    """What is asked for has the value of a full measurement; what costs time and is not asked for is None."""
+    whole, some = asdict(measure(kick(), RATE_HZ)), asdict(measure(kick(), RATE_HZ, only=names))
+    together = [
+        {"start_hz", "settled_hz", "note", "cents"},
+        {"momentary_lufs", "integrated_lufs"},
+        {"true_peak_dbtp"},
+        {"decay_s"},
+        {"attack_s"},
+        {"centroid_hz"},
+    ]
+    kept = set().union(*(group for group in together if group & set(names)))
+    dear = set().union(*together)
+    assert some == {name: None if name in dear - kept else value for name, value in whole.items()}
+
+
 def test_pitch_track_starts_high_and_settles():
     times_s, hz = pitch_track(kick(), RATE_HZ)
     assert times_s.shape == hz.shape

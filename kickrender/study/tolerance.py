@@ -1,0 +1,193 @@
+"""What becomes of a circuit that is built many times, of real parts: a distribution, and how many keep given limits."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+
+from kickrender.circuit import Circuit
+from kickrender.circuit.spread import Deviations, Spread, deviations, read_spread, spread_faults
+from kickrender.errors import Fault, InputError, KickrenderError, MeasurementError
+from kickrender.pack.workers import Progress
+from kickrender.sound.options import SoundOptions
+from kickrender.sound.render import Settings
+from kickrender.study.aspects import ASPECTS, USUAL
+from kickrender.study.limits import Limit
+from kickrender.study.many import Reading, Variant, measure_many
+
+FEWEST_DRAWS, MOST_DRAWS = 2, 10_000
+PERCENTILES = (5, 25, 50, 75, 95)
+CONFIDENCE = 0.95
+# What a drawer of film resistors, film capacitors, coils and tracks holds. Common practice, no source.
+USUAL_SPREAD = {"resistor": "1%", "capacitor": "5%", "inductor": "10%", "pot": "20%"}
+USUAL_SEED = "1"
+
+
+class NothingKept(KickrenderError):
+    """No draw lies within every limit."""
+
+
+@dataclass(frozen=True)
+class Draw:
+    """One build: what its parts deviate by, and what it sounds like.
+
+    number : from 1; take `number` of a pack of the same seed and tolerances has the same parts.
+    values : aspect -> value; None where the sound has none.
+    missed : aspects whose limits it does not keep.
+    failure : why there is no sound, in words; else empty.
+    """
+
+    number: int
+    drawn: Deviations
+    values: Mapping[str, float | None]
+    missed: tuple[str, ...] = ()
+    failure: str = ""
+
+
+@dataclass(frozen=True)
+class Yield:
+    """How many draws keep every limit, and the exact (Clopper and Pearson's) confidence interval of that share."""
+
+    kept: int
+    count: int
+    low: float
+    high: float
+
+    @property
+    def share(self) -> float:
+        return self.kept / self.count
+
+
+@dataclass(frozen=True)
+class Tolerance:
+    """A circuit built many times.
+
+    exact : aspect -> value with exact parts.
+    """
+
+    circuit: Circuit
+    settings: Mapping[str, float | bool]
+    spread: Spread
+    limits: tuple[Limit, ...]
+    exact: Mapping[str, float | None]
+    draws: tuple[Draw, ...]
+
+    @property
+    def aspects(self) -> tuple[str, ...]:
+        return tuple(self.exact)
+
+    def values(self, aspect: str) -> list[float]:
+        """The aspect's value of every draw that has one."""
+        return [value for draw in self.draws if (value := draw.values.get(aspect)) is not None]
+
+    @property
+    def kept(self) -> Yield:
+        """The yield. Source of the interval: C. J. Clopper and E. S. Pearson (1934), by scipy.stats.binomtest."""
+        from scipy.stats import binomtest  # slow to load
+
+        kept, count = sum(not draw.missed and not draw.failure for draw in self.draws), len(self.draws)
+        interval = binomtest(kept, count).proportion_ci(CONFIDENCE, "exact")
+        return Yield(kept, count, float(interval.low), float(interval.high))
+
+
+def read_study_spread(
+    circuit: Circuit,
+    given: Mapping[str, Any],
+    seed: str = USUAL_SEED,
+    distribution: str = "normal",
+    place: str = "spread",
+) -> Spread:
+    """The spread of a study, from tolerances by kind, part or device number as in a pack's takes.
+
+    Parameters
+    ----------
+    given : mapping
+        "resistor" -> "1%", "npn.forward_gain" -> "30%", "temperature" -> "3C"; USUAL_SPREAD when empty.
+
+    Raises
+    ------
+    InputError
+        With every fault.
+    """
+
+    def where(*keys: str) -> str:
+        return "--distribution" if keys == ("distribution",) else " ".join((place, ".".join(keys)))
+
+    spread = read_spread(given or USUAL_SPREAD, seed, distribution, where)
+    if faults := spread_faults(spread, [circuit], where):
+        raise InputError(faults)
+    return spread
+
+
+def tolerance(
+    circuit: Circuit,
+    spread: Spread,
+    *,
+    settings: Settings | None = None,
+    count: int = 100,
+    limits: Sequence[Limit] = (),
+    options: SoundOptions | None = None,
+    jobs: int = 1,
+    progress: Progress = lambda done: None,
+) -> Tolerance:
+    """Build a circuit `count` times of parts that deviate, strike each once and measure it.
+
+    Parameters
+    ----------
+    count : int
+        Draws, 2 to 10,000.
+    limits : sequence of Limit
+        What a build has to keep; aspects beyond the usual are measured when a limit asks for them.
+    jobs : int
+        Worker processes; no value depends on it.
+    progress : function (done) -> None
+        Told how many more sounds are measured, `count` + 1 in all.
+
+    Raises
+    ------
+    InputError
+        If the count is out of range or the settings do not suit the circuit.
+    SolveError, MeasurementError
+        If the circuit of exact parts cannot be solved, or is silent.
+    """
+    if not FEWEST_DRAWS <= count <= MOST_DRAWS:
+        raise InputError(Fault("--count", f"found {count}", f"{FEWEST_DRAWS} to {MOST_DRAWS} draws"))
+    settings = settings or {}
+    resolved = circuit.resolve(settings, "--set")
+    aspects = tuple(dict.fromkeys((*USUAL, *(limit.aspect for limit in limits))))
+    wanted = tuple(dict.fromkeys(field for aspect in aspects for field in ASPECTS[aspect].fields))
+    drawn = [deviations(circuit, spread, number) for number in range(1, count + 1)]
+    variants = [Variant(settings), *(Variant(settings, each) for each in drawn)]
+    nominal, *readings = measure_many(circuit, variants, wanted, options, jobs=jobs, progress=progress)
+    if nominal.measurements is None or nominal.measurements.peak_dbfs is None:
+        raise MeasurementError(nominal.failure or f"'{circuit.name}' is silent: there is nothing to measure")
+    exact = _values(aspects, nominal)
+    draws = []
+    for number, (each, reading) in enumerate(zip(drawn, readings, strict=True), 1):
+        values = _values(aspects, reading)
+        missed = tuple(x.aspect for x in limits if not x.keeps(values[x.aspect], exact[x.aspect]))
+        draws.append(Draw(number, each, values, missed, reading.failure))
+    return Tolerance(circuit, resolved.settings, spread, tuple(limits), exact, tuple(draws))
+
+
+def _values(aspects: Sequence[str], reading: Reading) -> dict[str, float | None]:
+    found = reading.measurements
+    return {name: None if found is None else ASPECTS[name].measured(found) for name in aspects}
+
+
+def statistics(values: Sequence[float]) -> dict[str, float] | None:
+    """Mean, standard deviation (n - 1), least, largest and percentiles; None of fewer than two values."""
+    if len(values) < 2:
+        return None
+    row = np.array(values)
+    points = {f"p{p}": float(value) for p, value in zip(PERCENTILES, np.percentile(row, PERCENTILES), strict=True)}
+    return {
+        "mean": float(row.mean()),
+        "standard_deviation": float(row.std(ddof=1)),
+        "min": float(row.min()),
+        **points,
+        "max": float(row.max()),
+    }
