@@ -8,6 +8,7 @@ import click
 
 from kickrender.cli.settings import json_option, note, print_json, read_settings, set_option
 from kickrender.cli.solver import ready_solver
+from kickrender.cli.tables import check_table_name
 
 
 @click.command()
@@ -21,6 +22,7 @@ from kickrender.cli.solver import ready_solver
 @click.option("--raw", is_flag=True, help="Volts over full scale from t = 0: no level, trim, fade or dither.")
 @click.option("--level", metavar="LEVEL", help='Wanted level: "-14 LUFS", "-1 dBTP", "-3 dBFS".  [default: none]')
 @click.option("--probe", "probes", metavar="NET", multiple=True, help="One more channel: this net. May be given again.")
+@click.option("--csv", "table", type=click.Path(path_type=Path), metavar="FILE", help="Probed nets go there, in volts.")
 @json_option
 def render(
     circuit: str,
@@ -33,6 +35,7 @@ def render(
     raw: bool,
     level: str | None,
     probes: tuple[str, ...],
+    table: Path | None,
     as_json: bool,
 ) -> None:
     """Strike CIRCUIT once and write the sound, with a sidecar (.json) that holds its whole recipe.
@@ -42,6 +45,7 @@ def render(
       kickrender render bridged-t --out hit.wav
       kickrender render bridged-t --set decay=0.8 --set accent=5V --level "-16 LUFS" --out long.wav
       kickrender render my-circuit.toml --raw --length 0.5 --format float32 --probe core --out nets.wav
+      kickrender render bridged-t --probe ring --probe sweep --csv nets.csv --out hit.wav
     """
     from kickrender.circuit import read_circuit
     from kickrender.sound.level import read_level_text
@@ -49,6 +53,10 @@ def render(
     from kickrender.sound.wav import check_wav_name
 
     check_wav_name(out)
+    if table is not None:
+        check_table_name(table)
+        if not probes:
+            raise click.UsageError("--csv goes with --probe NET")
     turned = read_settings(settings)
     options = read_options(
         {"rate": rate, "format": sample_format, "length": length, "oversample": oversample, "raw": raw or None},
@@ -61,8 +69,11 @@ def render(
     from kickrender.sound.loaded import LoadedCircuit, check_probes
 
     check_probes(resolved, probes, "--probe")
-    sound = LoadedCircuit(struck).render(turned, options=options, level=wanted, probes=probes)
+    channels, nets = (probes, ()) if table is None else ((), probes)
+    sound = LoadedCircuit(struck).render(turned, options=options, level=wanted, probes=channels, nets=nets)
     sound.write(out)
+    if table is not None:
+        sound.write_nets(table)
     for text in sound.facts["notes"]:
         note(f"note: {text}")
     if as_json:

@@ -29,6 +29,7 @@ class LoadedCircuit:
         options: SoundOptions | None = None,
         level: Level | str | None = None,
         probes: Sequence[str] = (),
+        nets: Sequence[str] = (),
         **controls: float | str | bool,
     ) -> Sound:
         """Strike the circuit once.
@@ -43,6 +44,8 @@ class LoadedCircuit:
             "-14 LUFS", "-1 dBTP"; None keeps volts over full scale.
         probes : sequence of str
             Nets to keep as further channels.
+        nets : sequence of str
+            Nets to keep in volts, as `sound.nets`, for `sound.write_nets(path)`.
         **controls
             Settings by name, after `settings`.
 
@@ -54,7 +57,8 @@ class LoadedCircuit:
         Raises
         ------
         InputError
-            If a setting, level or probe is wrong, or the sound goes beyond full scale in a format that would clip it.
+            If a setting, level, probe or net is wrong, or the sound goes beyond full scale in a format that would clip
+            it.
         SolveError, MeasurementError
             If the circuit cannot be solved, or the sound has no such level (silence).
         """
@@ -62,7 +66,8 @@ class LoadedCircuit:
         level = read_level_text(level, "level") if isinstance(level, str) else level
         resolved = self.circuit.resolve({**(settings or {}), **controls})
         check_probes(resolved, probes, "probes")
-        (take,) = hear_each([(self.circuit, {**(settings or {}), **controls})], options, probes)
+        check_probes(resolved, nets, "nets")
+        (take,) = hear_each([(self.circuit, {**(settings or {}), **controls})], options, probes, nets=nets)
         if isinstance(take, KickrenderError):
             raise take
         gain = Gain(0.0) if level is None or options.raw else level_gain([take.measurements], level)

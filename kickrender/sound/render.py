@@ -9,6 +9,8 @@ measured is what the file holds. Who knows the gain beforehand and wants the fil
 
 from __future__ import annotations
 
+import csv
+import io
 from collections.abc import Iterable, Iterator, Mapping, Sequence
 from dataclasses import asdict, dataclass, field, replace
 from functools import cached_property
@@ -45,6 +47,7 @@ class Take:
 
     samples : (n,), volts over full scale, cut and faded unless raw.
     probes : net -> (n,), volts over full scale, cut and faded alike.
+    nets : net -> (n,), cut alike, neither scaled nor faded. [V]
     measurements : of `samples`, taken when they are first asked for.
     notes : what a person should know, in words.
     """
@@ -54,6 +57,7 @@ class Take:
     options: SoundOptions
     samples: Floats
     probes: Mapping[str, Floats]
+    nets: Mapping[str, Floats]
     notes: tuple[str, ...]
 
     @cached_property
@@ -70,6 +74,8 @@ class Sound:
     rate : samples per second. [Hz]
     facts : what the sidecar says.
     probes : net -> (n,), further channels of the file.
+    nets : net -> (n,), beside the file: as long as the sound and band-limited as it is, but neither levelled nor
+        faded. [V]
     pcm : the file's numbers, (n,) or (n, channels).
     """
 
@@ -77,6 +83,7 @@ class Sound:
     rate: int
     facts: Mapping[str, Any]
     probes: Mapping[str, Floats] = field(default_factory=dict)
+    nets: Mapping[str, Floats] = field(default_factory=dict)
     pcm: Pcm = field(repr=False, default_factory=lambda: np.empty(0, np.float32))
 
     def write(self, path: str | Path) -> None:
@@ -88,6 +95,21 @@ class Sound:
             If either cannot be written, or the .json is there and somebody else's. Nothing half-written is left.
         """
         write_pair(Path(path), self, self.facts)
+
+    def write_nets(self, path: str | Path) -> None:
+        """Write `nets` as CSV: time_s, then a column for each net, in volts; every number to its last digit.
+
+        Raises
+        ------
+        WriteError
+            If it cannot be written. Nothing half-written is left.
+        """
+        columns = [np.arange(len(self.samples)) / self.rate, *self.nets.values()]
+        text = io.StringIO()
+        writer = csv.writer(text, lineterminator="\n")
+        writer.writerow(["time_s", *(f"{net}_v" for net in self.nets)])
+        writer.writerows(zip(*(column.tolist() for column in columns), strict=True))
+        write_whole(Path(path), text.getvalue().encode())
 
     def summary(self) -> str:
         """Length, levels and pitch in one line."""
@@ -124,6 +146,7 @@ def hear_each(
     options: SoundOptions,
     probes: Sequence[str] = (),
     measured: bool = True,
+    nets: Sequence[str] = (),
 ) -> Iterator[Take | KickrenderError]:
     """Every hit's take in order, or the reason there is none. All are solved at once, side by side.
 
@@ -136,6 +159,8 @@ def hear_each(
         Nets to keep beside the output.
     measured : bool, default True
         Whether to measure, so that a sound without measurements fails here. Else a take measures when asked.
+    nets : sequence of str
+        Nets to keep in volts.
 
     Raises
     ------
@@ -144,13 +169,13 @@ def hear_each(
     """
     resolved = [wanted if isinstance(wanted, ResolvedCircuit) else circuit.resolve(wanted) for circuit, wanted in hits]
     length_s = options.longest_s + margin_s(options.rate_hz, options.oversample)
-    solutions = solve_each(resolved, [length_s] * len(hits), probes=probes)
+    solutions = solve_each(resolved, [length_s] * len(hits), probes=[*probes, *nets])
     for (circuit, _), solution in zip(hits, solutions, strict=True):
         if isinstance(solution, SolveError):
             yield solution
             continue
         try:
-            take = _heard(circuit, solution, options, probes)
+            take = _heard(circuit, solution, options, probes, nets)
             if measured:
                 _ = take.measurements
         except KickrenderError as error:
@@ -159,7 +184,9 @@ def hear_each(
         yield take
 
 
-def _heard(circuit: Circuit, solution: Solution, options: SoundOptions, probes: Iterable[str]) -> Take:
+def _heard(
+    circuit: Circuit, solution: Solution, options: SoundOptions, probes: Iterable[str], nets: Iterable[str]
+) -> Take:
     count, notes = _samples_wanted(solution, options)
     full_scale = solution.circuit.full_scale_v
 
@@ -167,15 +194,16 @@ def _heard(circuit: Circuit, solution: Solution, options: SoundOptions, probes: 
         def volts(first: int, number: int) -> Floats:
             return solution.sample(options.rate_hz * options.oversample, number, first, net)
 
-        return decimate(volts, count, options.oversample) / full_scale
+        return decimate(volts, count, options.oversample)
 
-    samples = at_rate(solution.circuit.output)
+    samples = at_rate(solution.circuit.output) / full_scale
     if not options.raw:
         samples = fade(trim(samples, options.rate_hz), options.rate_hz)
-    others = {net: at_rate(net)[: len(samples)] for net in probes}
+    others = {net: at_rate(net)[: len(samples)] / full_scale for net in probes}
     if not options.raw:
         others = {net: fade(values, options.rate_hz) for net, values in others.items()}
-    return Take(circuit, solution, options, samples, others, notes)
+    in_volts = {net: at_rate(net)[: len(samples)] for net in nets}
+    return Take(circuit, solution, options, samples, others, in_volts, notes)
 
 
 def _samples_wanted(solution: Solution, options: SoundOptions) -> tuple[int, tuple[str, ...]]:
@@ -241,7 +269,7 @@ def finish(take: Take, gain: Gain, level: Level | None, seed: int | None = None)
         "notes": notes,
         "recipe_digest": digest,
     }
-    return Sound(samples, options.rate_hz, facts, probes, pcm)
+    return Sound(samples, options.rate_hz, facts, probes, take.nets, pcm)
 
 
 def numbers(take: Take, gain: Gain, level: Level | None, seed: int) -> tuple[Floats, dict[str, Floats], Pcm]:

@@ -12,6 +12,7 @@ import pytest
 import soundfile
 
 import kickrender
+from kickrender.sound.options import SoundOptions
 from tests.cli.conftest import Run
 
 SCHEMA = json.loads((resources.files("kickrender.pack") / "schemas" / "sidecar.schema.json").read_text())
@@ -96,6 +97,27 @@ def test_raw_is_volts_over_full_scale_from_the_rest_state(run: Run, folder: Path
     assert facts["pcm"]["channels"] == ["out", "core"]
     assert facts["level"] is None
     assert facts["gain_db"] == 0.0
+
+
+def test_probed_nets_as_a_table(run: Run, folder: Path) -> None:
+    loud = ("--set", "accent=5V", "--level", "-30 LUFS")
+    ran = run("render", "voice.toml", "--out", "hit.wav", *loud, "--probe", "core", "--probe", "out",
+              "--csv", "nets.csv")  # fmt: skip
+    assert (ran.code, ran.err) == (0, "")
+    head, *lines = Path("nets.csv").read_text().splitlines()
+    assert head == "time_s,core_v,out_v"
+    table = np.array([[float(cell) for cell in line.split(",")] for line in lines])
+    info = soundfile.info("hit.wav")
+    assert (info.channels, info.frames) == (1, len(table))
+    assert np.array_equal(table[:, 0], np.arange(len(table)) / 48000)
+    # the table is what channels hold before the gain, in volts and to the last digit
+    loaded = kickrender.load("voice.toml")
+    assert np.array_equal(table[:, 1], loaded.render(accent=5.0, nets=["core"]).nets["core"])
+    unfaded = len(table) - 240
+    plain = loaded.render(accent=5.0, probes=["core"], options=SoundOptions(format="float32"))
+    assert np.array_equal(table[:unfaded, 1], plain.probes["core"][:unfaded])
+    assert np.array_equal(table[:unfaded, 2], plain.samples[:unfaded])
+    assert table[-1, 1] != 0.0
 
 
 @pytest.mark.parametrize("rate", [22050, 44100, 96000, 192000])

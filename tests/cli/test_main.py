@@ -87,6 +87,11 @@ def test_the_library_loads_nothing_heavy() -> None:
                                                       "mean 'core'?"),
         ("render voice.toml --out a.wav --probe gate", "kickrender: --probe: net 'gate' is held or driven from "
                                                        "outside; allowed: core, out"),
+        ("render voice.toml --out a.wav --csv n.csv", "kickrender render: --csv goes with --probe NET"),
+        ("render voice.toml --out a.wav --probe core --csv a.json", "kickrender: --csv: found 'a.json'; allowed: a "
+                                                                    "file name that ends in .csv"),
+        ("render voice.toml --out a.wav --csv n.csv --probe cor", "kickrender: --probe: no net 'cor'; allowed: core, "
+                                                                  "out; did you mean 'core'?"),
         ("render pack.toml --out a.wav", None),
     ],
 )  # fmt: skip
