@@ -28,7 +28,7 @@ MOST_NAMES = 20  # told by a dry run
 )
 @click.option("--dry-run", is_flag=True, help="Check everything; tell the number of hits, time, room and first names.")
 def pack(pack: str, out: Path | None, jobs: str | None, only: Path | None, dry_run: bool) -> None:
-    """Render every hit of PACK: one WAV and one sidecar each; pack.json, pack.csv and pack.png over all; and a
+    """Render every hit of PACK: one sound and one sidecar each; pack.json, pack.csv and pack.png over all; and a
     listening sheet, index.html, to hear, sort and choose hits in a browser.
 
     A second run renders only what is missing or changed. No file depends on the number of workers. The listening
@@ -67,8 +67,8 @@ def pack(pack: str, out: Path | None, jobs: str | None, only: Path | None, dry_r
         result = render_plan(plan, out, workers, bar.update)
     if result.kept:
         note(f"{len(result.kept)} hits were there already")
-    for name in result.stale:
-        note(f"note: {name}.wav is of an earlier run and no hit of this pack any more")
+    for file in result.stale:
+        note(f"note: {file} is of an earlier run and no hit of this pack any more")
     click.echo(f"{out}: {len(result.rendered) + len(result.kept)} hits, {len(result.rendered)} of them rendered now")
     if result.failed:
         raise HitsFailed("\n".join(f"{name}: {reason}" for name, reason in result.failed.items()))
@@ -81,7 +81,7 @@ def _foretell(plan: Plan, workers: int) -> None:
     ready_solver()
     click.echo(f"{plan.title}: {len(plan.hits)} hits, {estimate(plan, plan.hits, workers)}")
     for hit in plan.hits[:MOST_NAMES]:
-        click.echo(f"  {hit.name}.wav")
+        click.echo(f"  {hit.name}{plan.options.ending}")
     if len(plan.hits) > MOST_NAMES:
         click.echo(f"  and {len(plan.hits) - MOST_NAMES} more")
 

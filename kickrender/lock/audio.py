@@ -8,7 +8,6 @@ which FLAC cannot hold, as WAV.
 from __future__ import annotations
 
 import contextlib
-import io
 from collections.abc import Iterable
 from pathlib import Path
 from typing import Any
@@ -18,8 +17,8 @@ from numpy.typing import NDArray
 
 from kickrender.errors import Fault, InputError, WriteError
 from kickrender.lock.records import Lock, LockedHit
-from kickrender.sound.files import write_whole
 from kickrender.sound.finish import Pcm
+from kickrender.sound.flac import write_flac
 from kickrender.sound.wav import FORMATS, pcm_sha256, write_wav
 
 NAME_DIGITS = 12
@@ -45,13 +44,7 @@ def keep(path: Path, pcm: Pcm, rate_hz: int, sound_format: str) -> None:
     if sound_format == FLOAT:
         write_wav(path, pcm, rate_hz, sound_format)
         return
-    import soundfile
-
-    # The library takes 24 bits as the high ones of 32.
-    whole, subtype = (pcm, "PCM_16") if pcm.dtype == np.int16 else (pcm * np.int32(256), "PCM_24")
-    file = io.BytesIO()
-    soundfile.write(file, whole, rate_hz, format="FLAC", subtype=subtype)
-    write_whole(path, file.getvalue())
+    write_flac(path, pcm, rate_hz, sound_format)
 
 
 def kept_sound(path: Path, hit: LockedHit, sound_format: str, place: str) -> NDArray[np.float64]:

@@ -32,7 +32,7 @@ def lock_of(plan: Plan, pack: str) -> Lock:
         title=plan.title,
         made={"kickrender": __version__, "engine": ENGINE_VERSION, "code": code_digest()},
         libraries=libraries(),
-        sound=fields_of(asdict(plan.options)),
+        sound=fields_of(plan.options.of_samples()),
         level={} if plan.level is None else {**fields_of(asdict(plan.level)), "together": ",".join(plan.together)},
         audio="",
         circuits={name: LockedCircuit(circuit.digest, entries(circuit)) for name, circuit in plan.circuits.items()},

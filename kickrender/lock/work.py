@@ -126,7 +126,7 @@ def hash_batch(job: Job, stop: Stop) -> Iterator[Found]:
             continue
         try:
             pcm = numbers(take, batch.gains[hit.group], batch.level, hit.seed)[2]
-            yield Found(hit.name, pcm_sha256(pcm, batch.options.format), faults=_kept_faults(job, hit))
+            yield Found(hit.name, pcm_sha256(pcm, batch.options.sample_format), faults=_kept_faults(job, hit))
         except KickrenderError as error:
             yield Found(hit.name, failure=str(error))
 
@@ -139,8 +139,8 @@ def render_batch(job: Job, stop: Stop) -> Iterator[Found]:
             continue
         found = _locked_hit(job, hit, sound)
         if job.keep is not None and not (job.keep_moved and _is_locked(job, found)):
-            name = audio_name(hit.name, found.pcm, job.batch.options.format)
-            keep(job.keep / name, sound.pcm, sound.rate, job.batch.options.format)
+            name = audio_name(hit.name, found.pcm, job.batch.options.sample_format)
+            keep(job.keep / name, sound.pcm, sound.rate, job.batch.options.sample_format)
         null_db, faults = _null(job, hit, found, sound)
         yield Found(hit.name, found.pcm, found, null_db, faults=faults)
 

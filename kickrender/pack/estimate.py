@@ -8,9 +8,14 @@ from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from pathlib import Path
 
+import numpy as np
+
 from kickrender.errors import Fault, InputError
 from kickrender.pack.records import Hit, Plan
+from kickrender.sound.finish import quantise
+from kickrender.sound.flac import flac_bytes
 from kickrender.sound.level import Gain
+from kickrender.sound.measure import SILENCE
 from kickrender.sound.render import Take, finish, hear_each
 from kickrender.sound.sidecar import json_bytes
 from kickrender.sound.wav import FORMATS
@@ -61,7 +66,7 @@ def check_room(plan: Plan, folder: Path, hits: Sequence[Hit]) -> None:
         free = shutil.disk_usage(there).free
     except OSError:
         return  # a disk that does not say is found full when it is
-    _, width, _ = FORMATS[plan.options.format]
+    _, width, _ = FORMATS[plan.options.sample_format]
     longest = round(plan.options.longest_s * plan.options.rate_hz) * width + 4 * FURTHER_BYTES
     if longest * len(hits) < free:
         return
@@ -73,9 +78,14 @@ def check_room(plan: Plan, folder: Path, hits: Sequence[Hit]) -> None:
 
 def _room(take: Take) -> int:
     """What a hit's files take. It is finished for that, as floats that nothing can clip: that takes time as well."""
-    _, width, _ = FORMATS[take.options.format]
-    sidecar = json_bytes(finish(replace(take, options=replace(take.options, format="float32")), Gain(0.0), None).facts)
-    sizes = (len(take.samples) * width, len(sidecar) + FURTHER_BYTES)
+    options = take.options
+    _, width, _ = FORMATS[options.sample_format]
+    sound = finish(replace(take, options=replace(options, format="float32")), Gain(0.0), None)
+    size = len(take.samples) * width
+    if options.ending == ".flac":  # the better packed, the quieter: as loud as can be
+        pcm = quantise(take.samples / max(np.abs(take.samples).max(), SILENCE), options.sample_format)
+        size = len(flac_bytes(pcm, options.rate_hz, options.sample_format))
+    sizes = (size, len(json_bytes(sound.facts)) + FURTHER_BYTES)
     return sum(-(-size // BLOCK_BYTES) * BLOCK_BYTES for size in sizes)
 
 

@@ -11,8 +11,9 @@ from typing import Any
 
 from kickrender.errors import WriteError
 from kickrender.pack.records import Plan
-from kickrender.pack.sidecar import json_path, wav_path
+from kickrender.pack.sidecar import json_path, sound_path
 from kickrender.sound.files import write_whole
+from kickrender.sound.options import ENDINGS, ending_of
 from kickrender.sound.sidecar import check_ours, json_bytes, read_sidecar
 
 SCHEMA = "kickrender pack"
@@ -29,7 +30,7 @@ def write_manifest(plan: Plan, folder: Path, failed: Mapping[str, str]) -> None:
         If a file cannot be written, or a sidecar has gone meanwhile.
     """
     check_ours(folder / JSON_NAME)
-    hits = [_entry(folder, hit.name) for hit in plan.hits if hit.name not in failed]
+    hits = [_entry(plan, folder, hit.name) for hit in plan.hits if hit.name not in failed]
     manifest = {
         "schema": SCHEMA,
         "schema_version": SCHEMA_VERSION,
@@ -56,20 +57,25 @@ def remove_manifest(folder: Path) -> None:
             raise WriteError(f"{folder / name}: cannot be replaced: {error.strerror}") from None
 
 
-def stale_names(plan: Plan, folder: Path) -> tuple[str, ...]:
-    """Hits on disk, by name, that this pack does not hold (any more)."""
+def stale_files(plan: Plan, folder: Path) -> tuple[str, ...]:
+    """Sounds on disk, of hits that this pack does not hold (any more) or holds in another format."""
     planned = {hit.name for hit in (*plan.hits, *plan.left_out)}
-    found = (path.relative_to(folder).with_suffix("").as_posix() for path in folder.rglob("*.json"))
-    return tuple(sorted(n for n in found if n not in planned and read_sidecar(json_path(folder, n)) is not None))
+    others = [ending for ending in ENDINGS if ending != plan.options.ending]
+    stale = {f"{name}{other}" for name in planned for other in others if sound_path(folder, name, other).is_file()}
+    for path in folder.rglob("*.json"):
+        name = path.relative_to(folder).with_suffix("").as_posix()
+        if name not in planned and (facts := read_sidecar(path)) is not None:
+            stale.add(f"{name}{ending_of(facts['sound']['format'])}")
+    return tuple(sorted(stale))
 
 
-def _entry(folder: Path, name: str) -> dict[str, Any]:
+def _entry(plan: Plan, folder: Path, name: str) -> dict[str, Any]:
     facts = read_sidecar(json_path(folder, name))
     if facts is None:
         raise WriteError(f"{json_path(folder, name)}: has gone or was changed while the pack was rendered; run again")
     return {
         "name": name,
-        "file": wav_path(Path(), name).as_posix(),
+        "file": sound_path(Path(), name, plan.options.ending).as_posix(),
         "sidecar": json_path(Path(), name).as_posix(),
         "axes": facts["pack"]["axes"],
         "recipe_digest": facts["recipe_digest"],

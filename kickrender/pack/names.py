@@ -13,11 +13,13 @@ from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
 
 from kickrender.errors import Fault, nearest_name
+from kickrender.sound.options import ENDINGS
 
 RESERVED_NAMES = {"con", "prn", "aux", "nul", *(f"com{n}" for n in range(10)), *(f"lpt{n}" for n in range(10))}
 FORBIDDEN = '<>:"|?*\\'
 LONGEST_PIECE_BYTES = 200  # file systems allow 255; the rest is for `.json` and a temporary file's mark
 MANIFEST_NAMES = ("pack",)  # pack.json, pack.csv
+FILES_OVER_ALL = ("pack.json", "pack.csv", "pack.png", "index.html", "license.txt")  # which no folder can be called
 
 
 @dataclass(frozen=True)
@@ -80,6 +82,8 @@ def name_fault(name: str) -> str | None:
             return f"has a piece longer than {LONGEST_PIECE_BYTES} bytes"
     if name.casefold() in MANIFEST_NAMES:
         return f"is taken by {name.casefold()}.json"
+    if "/" in name and (first := name.casefold().split("/")[0]) in FILES_OVER_ALL:
+        return f"needs a folder '{name[: len(first)]}', and there is a file of that name"
     return None
 
 
@@ -106,7 +110,7 @@ def name_faults(names: Sequence[str], place: str, most: int = 5) -> list[Fault]:
         owner[key] = name
     folders = {key[:end] for key in owner for end, c in enumerate(key) if c == "/"}
     for folder in sorted(folders):
-        for ending in (".wav", ".json"):
+        for ending in (*ENDINGS, ".json"):
             if folder.endswith(ending) and folder.removesuffix(ending) in owner:
                 clashes.append(Fault(place, f"'{folder}' is a file and a folder", "distinct names"))
     return [*_first(unsafe, most, place), *_first(clashes, most, place)]

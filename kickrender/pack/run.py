@@ -11,7 +11,7 @@ from pathlib import Path
 from kickrender.errors import MeasurementError, WriteError
 from kickrender.pack.batches import MOST_HITS, batches_of, groups_of
 from kickrender.pack.estimate import check_room
-from kickrender.pack.manifest import remove_manifest, stale_names, write_manifest
+from kickrender.pack.manifest import remove_manifest, stale_files, write_manifest
 from kickrender.pack.records import Hit, Plan
 from kickrender.pack.render import Outcome, gain_of, measure_batch, render_batch
 from kickrender.pack.sheets import remove_sheets, sheet_of, write_sheets
@@ -29,7 +29,7 @@ class Result:
 
     rendered, kept : names of hits made now, and found whole from an earlier run.
     failed : name -> why, for hits that have no file.
-    stale : WAVs of an earlier run of this pack that belong to no hit any more.
+    stale : sounds of an earlier run that belong to no hit of this pack any more, by file.
     """
 
     rendered: tuple[str, ...]
@@ -45,7 +45,7 @@ def missing_hits(plan: Plan, folder: Path) -> list[Hit]:
 
 
 def render_plan(plan: Plan, folder: Path, jobs: int = 1, progress: Progress = lambda hits: None) -> Result:
-    """Fill `folder` with the pack: a WAV and a sidecar for each hit, then manifest and sheets over all.
+    """Fill `folder` with the pack: a sound and a sidecar for each hit, then manifest and sheets over all.
 
     Parameters
     ----------
@@ -74,7 +74,7 @@ def render_plan(plan: Plan, folder: Path, jobs: int = 1, progress: Progress = la
     _open_folder(folder)
     sheet_of(folder)  # somebody else's index.html is told of now, not after the rendering
     kept = {hit.name for hit in plan.hits} - {hit.name for hit in missing}
-    stale = stale_names(plan, folder)
+    stale = stale_files(plan, folder)
     progress(len(kept))
     failed: dict[str, str] = {}
     if missing:

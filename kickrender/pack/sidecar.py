@@ -1,4 +1,4 @@
-"""The files of one hit: its WAV, and a sidecar that adds the hit's place in the pack to what the sound says."""
+"""The files of one hit: its sound, and a sidecar that adds the hit's place in the pack to what the sound says."""
 
 from __future__ import annotations
 
@@ -10,15 +10,15 @@ from typing import Any
 from kickrender.errors import WriteError
 from kickrender.pack.batches import Batch
 from kickrender.pack.records import Hit, Plan, Tags
-from kickrender.pack.tags import chunks_of
+from kickrender.pack.tags import chunks_of, texts_of
 from kickrender.sound.render import Sound, write_pair
 from kickrender.sound.sidecar import read_sidecar
-from kickrender.sound.wav import pcm_digest_of_file
+from kickrender.sound.sound_file import pcm_digest_of_file
 
 
-def wav_path(folder: Path, name: str) -> Path:
-    """The WAV of the hit called `name`."""
-    return folder / f"{name}.wav"
+def sound_path(folder: Path, name: str, ending: str) -> Path:
+    """The sound of the hit called `name`; `ending` is that of the pack's format."""
+    return folder / f"{name}{ending}"
 
 
 def json_path(folder: Path, name: str) -> Path:
@@ -27,19 +27,20 @@ def json_path(folder: Path, name: str) -> Path:
 
 
 def write_hit(batch: Batch, hit: Hit, sound: Sound) -> None:
-    """Write a hit's WAV and then its sidecar, making their folder when it is missing.
+    """Write a hit's sound and then its sidecar, making their folder when it is missing.
 
     Raises
     ------
     WriteError
         If the folder cannot be written to or is full, or somebody else's .json is in the way.
     """
-    wav = wav_path(batch.folder, hit.name)
+    path = sound_path(batch.folder, hit.name, batch.options.ending)
     try:
-        wav.parent.mkdir(parents=True, exist_ok=True)
+        path.parent.mkdir(parents=True, exist_ok=True)
     except OSError as error:
-        raise WriteError(f"{wav.parent}: cannot be made: {error.strerror}") from None
-    write_pair(wav, sound, sidecar_of(batch, hit, sound), chunks_of(batch.tags, batch.title, hit, sound))
+        raise WriteError(f"{path.parent}: cannot be made: {error.strerror}") from None
+    texts, chunks = texts_of(batch.tags, batch.title, hit), chunks_of(batch.tags, batch.title, hit, sound)
+    write_pair(path, sound, sidecar_of(batch, hit, sound), texts, chunks)
 
 
 def sidecar_of(batch: Batch, hit: Hit, sound: Sound) -> dict[str, Any]:
@@ -58,7 +59,9 @@ def is_done(plan: Plan, folder: Path, hit: Hit) -> bool:
         return False
     if facts.get("pack") != _place(plan.title, plan.together, plan.tags, hit):
         return False
-    return pcm_digest_of_file(wav_path(folder, hit.name)) == facts.get("pcm", {}).get("sha256")
+    if facts.get("sound", {}).get("format") != plan.options.format:  # the same samples, packed otherwise
+        return False
+    return pcm_digest_of_file(sound_path(folder, hit.name, plan.options.ending)) == facts.get("pcm", {}).get("sha256")
 
 
 def _place(title: str, together: Sequence[str], tags: Tags, hit: Hit) -> dict[str, Any]:

@@ -11,7 +11,7 @@ from typing import TYPE_CHECKING, Any
 from kickrender.circuit.values import shown
 from kickrender.pack.reading import Reading
 from kickrender.pack.records import Hit, Tags
-from kickrender.sound.chunks import bext_chunk, info_chunk, inst_chunk, midi_note, smpl_chunk
+from kickrender.sound.chunks import bext_chunk, inst_chunk, midi_note, smpl_chunk
 from kickrender.sound.wav import Chunk
 
 if TYPE_CHECKING:
@@ -46,18 +46,20 @@ def read_tags(reading: Reading) -> Tags:
     return Tags(**texts)
 
 
-def chunks_of(tags: Tags, title: str, hit: Hit, sound: Sound) -> list[Chunk]:
-    """LIST/INFO and bext for every hit, smpl and inst where it has a pitch. No chunk holds the time or a path."""
-    measured: Mapping[str, Any] = sound.facts["measurements"]
-    chunks: list[Chunk] = []
-    texts = {
+def texts_of(tags: Tags, title: str, hit: Hit) -> dict[str, str]:
+    """What a hit's file says in words, in any format."""
+    return {
         "title": hit.name.rpartition("/")[2],
         "album": title,
         "software": SOFTWARE,
         **{key: value for key, value in asdict(tags).items() if value},
     }
-    if info := info_chunk(texts):
-        chunks.append(info)
+
+
+def chunks_of(tags: Tags, title: str, hit: Hit, sound: Sound) -> list[Chunk]:
+    """What only a WAV has room for: bext for every hit, smpl and inst where it has a pitch; no time, no path."""
+    measured: Mapping[str, Any] = sound.facts["measurements"]
+    chunks: list[Chunk] = []
     options = sound.facts["sound"]
     history = _HISTORY_WORDS.get(options["format"], "")
     mode = "mono" if sound.pcm.ndim == 1 else f"{sound.pcm.shape[1]} channels"

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass
+from dataclasses import asdict, dataclass
 from typing import Any
 
 from kickrender.circuit.kinds import Choice, Flag, Quantity
@@ -11,7 +11,11 @@ from kickrender.circuit.values import parse_value, shown
 from kickrender.errors import Fault, InputError, nearest_name
 from kickrender.sound.measure import CONCERT_PITCH_HZ
 
-FORMATS = ("pcm16", "pcm24", "float32")
+# Format of a file -> format of its samples. FLAC packs whole numbers, without loss.
+SAMPLES = {"pcm16": "pcm16", "pcm24": "pcm24", "float32": "float32", "flac16": "pcm16", "flac24": "pcm24"}
+FORMATS = tuple(SAMPLES)
+ENDINGS = (".wav", ".flac")
+HIGHEST_ODD_FLAC_HZ = 65_535  # above it, a FLAC file's frames tell a rate in tens of hertz only
 LOWEST_RATE_HZ, HIGHEST_RATE_HZ = 22_050, 192_000
 OVERSAMPLES = (1, 2, 4, 8, 16, 32, 64)
 SHORTEST_S, LONGEST_S = 0.001, 60.0
@@ -36,6 +40,20 @@ class SoundOptions:
     oversample: int = 8
     raw: bool = False
     concert_pitch_hz: float = CONCERT_PITCH_HZ
+
+    @property
+    def sample_format(self) -> str:
+        """The format of the samples, whatever file they are packed in: "pcm16", "pcm24" or "float32"."""
+        return SAMPLES[self.format]
+
+    def of_samples(self) -> dict[str, Any]:
+        """The options by name, with the format of the samples: all that samples depend on."""
+        return {**asdict(self), "format": self.sample_format}
+
+    @property
+    def ending(self) -> str:
+        """What the file's name ends in."""
+        return ending_of(self.format)
 
     @property
     def longest_s(self) -> float:
@@ -71,9 +89,18 @@ def read_options(given: Mapping[str, Any], place: Callable[[str], str]) -> Sound
                 chosen[field] = read(value, place(name))
             except InputError as error:
                 faults.extend(error.faults)
+    options = SoundOptions(**chosen)
+    if not faults and options.ending == ".flac" and options.rate_hz > HIGHEST_ODD_FLAC_HZ and options.rate_hz % 10:
+        allowed = f"a multiple of 10 above {HIGHEST_ODD_FLAC_HZ}, or a WAV format"
+        faults.append(Fault(place("rate"), f"a rate of {options.rate_hz} Hz in a FLAC file", allowed))
     if faults:
         raise InputError(faults)
-    return SoundOptions(**chosen)
+    return options
+
+
+def ending_of(file_format: str) -> str:
+    """What the names of files of a format end in."""
+    return ".flac" if file_format.startswith("flac") else ".wav"
 
 
 def _whole(quantity: Quantity) -> Callable[[object, str], int]:

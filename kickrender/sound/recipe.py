@@ -30,7 +30,7 @@ def hit_recipe(
         "circuit": circuit.digest,
         "settings": dict(resolved.settings),
         **beyond_settings(resolved),
-        "sound": asdict(options),
+        "sound": options.of_samples(),
         "level": None if level is None or options.raw else asdict(level),
     }
 

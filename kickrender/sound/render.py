@@ -32,7 +32,8 @@ from kickrender.sound.measure import DECIBEL_DIGITS, OFFSET_DIGITS, Measurements
 from kickrender.sound.options import SoundOptions
 from kickrender.sound.recipe import dither_seed, hit_recipe, recipe_digest
 from kickrender.sound.sidecar import check_ours, json_bytes, sound_facts
-from kickrender.sound.wav import Chunk, pcm_sha256, write_wav
+from kickrender.sound.sound_file import check_sound_name, write_sound
+from kickrender.sound.wav import Chunk, pcm_sha256
 
 Floats = NDArray[np.float64]
 Settings = Mapping[str, float | str | bool]
@@ -87,13 +88,16 @@ class Sound:
     pcm: Pcm = field(repr=False, default_factory=lambda: np.empty(0, np.float32))
 
     def write(self, path: str | Path) -> None:
-        """Write the WAV file, and beside it the sidecar, with the ending .json.
+        """Write the file, and beside it the sidecar, with the ending .json.
 
         Raises
         ------
+        InputError
+            If the name does not end as files of the sound's format do.
         WriteError
             If either cannot be written, or the .json is there and somebody else's. Nothing half-written is left.
         """
+        check_sound_name(path, self.facts["sound"]["format"], "path")
         write_pair(Path(path), self, self.facts)
 
     def write_nets(self, path: str | Path) -> None:
@@ -124,8 +128,14 @@ class Sound:
         return ", ".join(pieces)
 
 
-def write_pair(path: Path, sound: Sound, facts: Mapping[str, Any], chunks: Sequence[Chunk] = ()) -> None:
-    """Write a sound's WAV file and then its sidecar beside it: both, or neither.
+def write_pair(
+    path: Path,
+    sound: Sound,
+    facts: Mapping[str, Any],
+    texts: Mapping[str, str] | None = None,
+    chunks: Sequence[Chunk] = (),
+) -> None:
+    """Write a sound's file and then its sidecar beside it: both, or neither. See `write_sound` for the rest.
 
     Raises
     ------
@@ -133,7 +143,7 @@ def write_pair(path: Path, sound: Sound, facts: Mapping[str, Any], chunks: Seque
     """
     sidecar = path.parent / f"{path.name.removesuffix(path.suffix)}.json"
     check_ours(sidecar)
-    write_wav(path, sound.pcm, sound.rate, sound.facts["sound"]["format"], chunks)
+    write_sound(path, sound.pcm, sound.rate, sound.facts["sound"]["format"], texts, chunks)
     try:
         write_whole(sidecar, json_bytes(facts))
     except WriteError:
@@ -262,7 +272,7 @@ def finish(take: Take, gain: Gain, level: Level | None, seed: int | None = None)
         "measurements": asdict(measurements),
         "measurements_before_level": asdict(take.measurements),
         "pcm": {
-            "sha256": pcm_sha256(pcm, options.format),
+            "sha256": pcm_sha256(pcm, options.sample_format),
             "samples": len(samples),
             "channels": [take.solution.circuit.output, *probes],
         },
@@ -280,7 +290,7 @@ def numbers(take: Take, gain: Gain, level: Level | None, seed: int) -> tuple[Flo
         samples = samples * gain.factor
         probes = {net: values * gain.factor for net, values in probes.items()}
     channels = np.column_stack([samples, *probes.values()]) if probes else samples
-    return samples, probes, quantise(channels, options.format, None if options.raw else seed)
+    return samples, probes, quantise(channels, options.sample_format, None if options.raw else seed)
 
 
 def _after_gain(before: Measurements, gain: Gain, samples: Floats, rate_hz: int) -> Measurements:

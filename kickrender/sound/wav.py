@@ -1,4 +1,4 @@
-"""RIFF/WAVE files: the one writer of sounds, and the digest of the samples in a file.
+"""RIFF/WAVE files: their one writer, and the digest of the samples in a file.
 
 Written here rather than by the file library because that one has no way to `smpl`, `inst` and `bext`, floors samples on
 their way to whole numbers, and puts the time of day into float files, which must be the same bytes at any time.
@@ -20,14 +20,14 @@ from typing import Any
 
 import numpy as np
 
-from kickrender.errors import Fault, InputError, WriteError
+from kickrender.errors import WriteError
 from kickrender.sound.files import write_whole
 from kickrender.sound.finish import Pcm
 
 PCM_TAG, FLOAT_TAG = 1, 3
 LARGEST_FILE = 2**32 - 1
 
-# Format -> (type of the array, bytes per sample, format tag).
+# Sample format -> (type of the array, bytes per sample, format tag).
 FORMATS: dict[str, tuple[np.dtype[Any], int, int]] = {
     "pcm16": (np.dtype(np.int16), 2, PCM_TAG),
     "pcm24": (np.dtype(np.int32), 3, PCM_TAG),
@@ -100,7 +100,7 @@ def _chunk(identifier: bytes, data: bytes) -> bytes:
     return struct.pack("<4sI", identifier, len(data)) + data + b"\0" * (len(data) % 2)
 
 
-def pcm_digest_of_file(path: Path) -> str | None:
+def pcm_digest_of_wav(path: Path) -> str | None:
     """SHA-256 of the samples in a WAV file; None when there is no such file or it is not a whole one."""
     try:
         content = Path(path).read_bytes()
@@ -116,9 +116,3 @@ def pcm_digest_of_file(path: Path) -> str | None:
             return hashlib.sha256(data).hexdigest() if len(data) == size else None
         place += 8 + size + size % 2
     return None
-
-
-def check_wav_name(path: str | Path, place: str = "--out") -> None:
-    """Refuse a file name that does not end in .wav; raises InputError."""
-    if Path(path).suffix.lower() != ".wav":
-        raise InputError(Fault(place, f"found '{path}'", "a file name that ends in .wav"))

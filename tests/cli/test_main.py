@@ -73,11 +73,17 @@ def test_the_library_loads_nothing_heavy() -> None:
                                         "accent), a part, an input or temperature; did you mean 'tone'?"),
         ("show voice.toml --set tone", "kickrender: --set: 'tone'; allowed: NAME=VALUE, for instance decay=0.7"),
         ("show voice.toml --set tone=2", "kickrender: --set tone: '2' is out of range; allowed: 0 to 1"),
-        ("render voice.toml --out a.mp3", "kickrender: --out: found 'a.mp3'; allowed: a file name that ends in .wav"),
+        ("render voice.toml --out a.mp3", "kickrender: --out: found 'a.mp3' for pcm24; allowed: a file name that ends "
+                                          "in .wav (pcm16, pcm24, float32) or .flac (flac16, flac24)"),
+        ("render voice.toml --out a.wav --format flac16", "kickrender: --out: found 'a.wav' for flac16; allowed: a "
+                                                          "file name that ends in .wav (pcm16, pcm24, float32) or "
+                                                          ".flac (flac16, flac24)"),
+        ("render voice.toml --out a.flac --rate 96001", "kickrender: --rate: a rate of 96001 Hz in a FLAC file; "
+                                                        "allowed: a multiple of 10 above 65535, or a WAV format"),
         ("render voice.toml --out a.wav --rate 1", "kickrender: --rate: '1' is out of range; allowed: 22.05kHz to "
                                                    "192kHz"),
         ("render voice.toml --out a.wav --format pcm8", "kickrender: --format: unknown word 'pcm8'; allowed: pcm16, "
-                                                        "pcm24, float32; did you mean 'pcm24'?"),
+                                                        "pcm24, float32, flac16, flac24; did you mean 'pcm24'?"),
         ("render voice.toml --out a.wav --length 0", "kickrender: --length: '0' is out of range; allowed: 1ms to 60s"),
         ("render voice.toml --out a.wav --oversample 3", "kickrender: --oversample: found '3'; allowed: 1, 2, 4, 8, "
                                                          "16, 32, 64"),

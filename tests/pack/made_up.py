@@ -14,7 +14,8 @@ import numpy as np
 
 from kickrender.sound.finish import quantise
 from kickrender.sound.measure import measure
-from kickrender.sound.wav import write_wav
+from kickrender.sound.options import ending_of
+from kickrender.sound.sound_file import write_sound
 
 RATE_HZ = 44_100
 
@@ -65,7 +66,7 @@ def make_measurements(hz: float, **more: Any) -> dict[str, Any]:
 
 
 def make_pack(folder: Path, title: str = "Made up", **more: Any) -> dict[str, Any]:
-    """27 hits on three axes, and two odd ones: a name full of marks, and silence, which has few measurements."""
+    """27 hits on three axes, and two odd ones: a FLAC whose name is full of marks, and silence, of few measurements."""
     hits = []
     grid = itertools.product((50.0, 60.0, 75.0), (0.15, 0.25, 0.4), ("soft", "firm", "hard"))
     for number, (hz, decay, accent) in enumerate(grid):
@@ -73,15 +74,17 @@ def make_pack(folder: Path, title: str = "Made up", **more: Any) -> dict[str, An
         hits.append(_write(folder, f"{hz:g}/{decay:g}-{accent}", hit_samples(hz, decay, level),
                            {"pitch": hz, "decay": decay, "accent": accent}, number / 10))  # fmt: skip
     odd = "odd/it's 100% & #1 \u00e9; [a]_b"
-    hits.append(_write(folder, odd, hit_samples(90.0, 0.2, 0.5), {"pitch": 90.0, "decay": 0.2}, 9.0))
+    hits.append(_write(folder, odd, hit_samples(90.0, 0.2, 0.5), {"pitch": 90.0, "decay": 0.2}, 9.0, "flac16"))
     hits.append(_write(folder, "odd/silence", np.zeros(RATE_HZ // 10), {"pitch": 0.0}, 9.5))
     manifest = manifest_of(hits, title, **more)
     (folder / "pack.json").write_text(json.dumps(manifest))
     return manifest
 
 
-def _write(folder: Path, name: str, samples: Any, axes: dict[str, Any], gain_db: float) -> dict[str, Any]:
-    path = folder / f"{name}.wav"
+def _write(
+    folder: Path, name: str, samples: Any, axes: dict[str, Any], gain_db: float, sound_format: str = "pcm16"
+) -> dict[str, Any]:
+    path = folder / f"{name}{ending_of(sound_format)}"
     path.parent.mkdir(parents=True, exist_ok=True)
-    write_wav(path, quantise(samples, "pcm16", 1), RATE_HZ, "pcm16")
-    return entry(name, axes, asdict(measure(samples, RATE_HZ)), gain_db)
+    write_sound(path, quantise(samples, "pcm16", 1), RATE_HZ, sound_format)
+    return entry(name, axes, asdict(measure(samples, RATE_HZ)), gain_db) | {"file": path.relative_to(folder).as_posix()}

@@ -69,8 +69,8 @@ def test_blocks_add_to_and_replace_what_the_file_says(folder: Path) -> None:
          ["p.toml:3, circuit: circuit 'voice.toml' twice; allowed: each circuit once"]),
         ('"44.1k"', '"44.1 V"', ["p.toml:5, sound.rate: '44.1 V' has the unit V, not Hz; allowed: a value in Hz "
                                  "('100Hz', '3 MHz')"]),
-        ('"pcm16"', '"pcm8"', ["p.toml:6, sound.format: unknown word 'pcm8'; allowed: pcm16, pcm24, float32; did you "
-                               "mean 'pcm24'?"]),
+        ('"pcm16"', '"pcm8"', ["p.toml:6, sound.format: unknown word 'pcm8'; allowed: pcm16, pcm24, float32, "
+                               "flac16, flac24; did you mean 'pcm24'?"]),
         ('["accent"]', '["acent"]', ["p.toml:11, level.together: no axis 'acent'; allowed: circuit, tone, accent; did "
                                      "you mean 'accent'?"]),
         ("[0.1, 0.5]", "0.1", ["p.toml:13, axes.tone: 0.1; allowed: a list of values, or { from, to, steps, law }"]),

@@ -221,7 +221,7 @@ def test_a_changed_pack_renders_only_what_changed(folder: Path, rendered: Render
     result = render_plan(plan_of(PACK.replace("[0.1, 0.5]", "[0.1, 0.6]"), folder), out)
     assert result.kept == ("0.1/1V", "0.1/3V", "0.1/5V")
     assert result.rendered == ("0.6/1V", "0.6/3V", "0.6/5V")
-    assert result.stale == ("0.5/1V", "0.5/3V", "0.5/5V")
+    assert result.stale == ("0.5/1V.wav", "0.5/3V.wav", "0.5/5V.wav")
 
 
 def test_a_run_that_ends_early_leaves_no_manifest(folder: Path, rendered: Rendered) -> None:

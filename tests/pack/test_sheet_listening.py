@@ -35,9 +35,9 @@ def test_a_hit_that_ends_is_said_to_have_ended(sheet: Chrome) -> None:
     assert is_silent(sheet)
 
 
-def test_a_name_full_of_marks_plays(sheet: Chrome) -> None:
+def test_a_flac_whose_name_is_full_of_marks_plays(sheet: Chrome) -> None:
     play_button(sheet, "odd/it's 100% & #1 \u00e9; [a]_b").click()
-    assert sounding(sheet).endswith("/odd/it's 100% & #1 \u00e9; [a]_b.wav")
+    assert sounding(sheet).endswith("/odd/it's 100% & #1 \u00e9; [a]_b.flac")
 
 
 def test_arrows_walk_and_play_and_space_stops(sheet: Chrome) -> None:

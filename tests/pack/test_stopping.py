@@ -18,7 +18,7 @@ from kickrender.pack.plan import plan_pack
 from kickrender.pack.read import read_pack
 from kickrender.pack.render import Outcome, Stop
 from kickrender.pack.workers import run_batches
-from kickrender.sound.wav import pcm_digest_of_file
+from kickrender.sound.sound_file import pcm_digest_of_file
 from tests.pack.texts import PACK
 
 MANY = PACK.replace("[0.1, 0.5]", "{ from = 0, to = 1, steps = 100 }").replace("{tone}", "{tone:.4f}")
