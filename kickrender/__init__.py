@@ -8,7 +8,7 @@ Importing this package loads none of numpy, scipy or numba; the functions below 
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Mapping, Sequence
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
@@ -18,9 +18,21 @@ if TYPE_CHECKING:
     from kickrender.lock.verify import Verification
     from kickrender.pack.run import Result
     from kickrender.sound.loaded import LoadedCircuit
+    from kickrender.study.sensitivity import Sensitivity
+    from kickrender.study.tolerance import Tolerance
 
 __version__ = "0.1.0"
-__all__ = ["__version__", "describe", "load", "lock_pack", "render_pack", "shipped", "verify_pack"]
+__all__ = [
+    "__version__",
+    "describe",
+    "load",
+    "lock_pack",
+    "render_pack",
+    "shipped",
+    "study_sensitivity",
+    "study_tolerance",
+    "verify_pack",
+]
 
 
 def load(name_or_path: str | Path) -> LoadedCircuit:
@@ -85,6 +97,51 @@ def describe(name_or_path: str | Path, settings: Mapping[str, float | str | bool
     from kickrender.study.describe import describe
 
     return describe(read_circuit(name_or_path), settings)
+
+
+def study_tolerance(
+    name_or_path: str | Path,
+    settings: Mapping[str, float | str | bool] | None = None,
+    *,
+    spread: Mapping[str, str | float] | None = None,
+    distribution: str = "normal",
+    seed: str | int = 1,
+    count: int = 100,
+    limits: Sequence[str] = (),
+    jobs: int = 1,
+) -> Tolerance:
+    """A circuit built many times of parts that deviate; see `kickrender.study.tolerance.tolerance`.
+
+    Parameters
+    ----------
+    spread : mapping, optional
+        Tolerances, "resistor" -> "1%"; by default those of `kickrender study tolerance`.
+    limits : sequence of str
+        What a build has to keep, "pitch=48..52Hz", "pitch=-30..30cents".
+    """
+    from kickrender.circuit import read_circuit
+    from kickrender.sound.warm_up import warm_up
+    from kickrender.study.limits import read_limits
+    from kickrender.study.tolerance import read_study_spread, tolerance
+
+    circuit = read_circuit(name_or_path)
+    read = read_study_spread(circuit, spread or {}, str(seed), distribution)
+    bounds = read_limits(limits, "limit")
+    warm_up()
+    return tolerance(circuit, read, settings=settings, count=count, limits=bounds, jobs=jobs)
+
+
+def study_sensitivity(
+    name_or_path: str | Path, settings: Mapping[str, float | str | bool] | None = None, *, jobs: int = 1
+) -> Sensitivity:
+    """What a percent of every part does to the sound; see `kickrender.study.sensitivity.sensitivity`."""
+    from kickrender.circuit import read_circuit
+    from kickrender.sound.warm_up import warm_up
+    from kickrender.study.sensitivity import sensitivity
+
+    circuit = read_circuit(name_or_path)
+    warm_up()
+    return sensitivity(circuit, settings=settings, jobs=jobs)
 
 
 def shipped() -> dict[str, dict[str, str]]:

@@ -21,25 +21,30 @@ json_option: Callable[[Any], Any] = click.option("--json", "as_json", is_flag=Tr
 
 
 def read_settings(texts: Sequence[str]) -> dict[str, str]:
-    """The settings in `--set NAME=VALUE` texts; a name given again counts once, at its last place.
+    """The settings in `--set NAME=VALUE` texts; see `read_pairs`."""
+    return read_pairs(texts, "--set", "decay=0.7")
+
+
+def read_pairs(texts: Sequence[str], option: str, example: str) -> dict[str, str]:
+    """The pairs in `NAME=VALUE` texts of an option; a name given again counts once, at its last place.
 
     Raises
     ------
     InputError
         For every text without a name or a value.
     """
-    settings: dict[str, str] = {}
+    pairs: dict[str, str] = {}
     faults = []
     for text in texts:
         name, _, value = (piece.strip() for piece in text.partition("="))
         if name and value:
-            settings.pop(name, None)
-            settings[name] = value
+            pairs.pop(name, None)
+            pairs[name] = value
         else:
-            faults.append(Fault("--set", f"'{text}'", "NAME=VALUE, for instance decay=0.7"))
+            faults.append(Fault(option, f"'{text}'", f"NAME=VALUE, for instance {example}"))
     if faults:
         raise InputError(faults)
-    return settings
+    return pairs
 
 
 def print_json(value: object) -> None:

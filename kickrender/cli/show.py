@@ -51,6 +51,7 @@ def show(
     ready_solver()
     from kickrender.study import bench_view
     from kickrender.study.describe import describe
+    from kickrender.study.files import write_table
 
     way = None if path is None else bench_view.read_path(path, resolved, "--response")
     facts = describe(loaded, turned)
@@ -60,7 +61,7 @@ def show(
         names = bench_view.write_pictures(loaded, turned, folder, way)
         note(f"{folder}: {len(names)} pictures")
     if table is not None:
-        bench_view.write_table(facts["response"]["table"], table)
+        write_table(facts["response"]["table"], table)
     if as_json:
         print_json(facts)
     else:

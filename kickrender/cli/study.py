@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import click
 
+from kickrender.cli.study_sensitivity import sensitivity
 from kickrender.cli.study_tolerance import tolerance
 from kickrender.cli.usage import Commands
 
@@ -14,9 +15,10 @@ def study() -> None:
 
     \b
     Examples:
-      kickrender study tolerance bridged-t --limit "pitch=-50..50cents"
+      kickrender study tolerance bridged-t --limit pitch=-30..30cents
+      kickrender study sensitivity bridged-t
     """
 
 
-for command in (tolerance,):
+for command in (tolerance, sensitivity):
     study.add_command(command)

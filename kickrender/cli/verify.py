@@ -9,7 +9,7 @@ import click
 
 from kickrender.cli.lock import lock_option, read_plan
 from kickrender.cli.pack import cores, read_jobs
-from kickrender.cli.settings import json_option, print_json
+from kickrender.cli.settings import json_option, print_json, read_pairs
 from kickrender.cli.solver import ready_solver
 from kickrender.errors import Fault, InputError
 
@@ -57,7 +57,7 @@ def verify(
     from kickrender.lock.moves import read_limits
     from kickrender.lock.text import read_lock
 
-    chosen = read_limits(_pairs(limits), "--limit")
+    chosen = read_limits(read_pairs(limits, "--limit", "pitch=2"), "--limit")
     read, plan = read_plan(pack)
     path = lock_file or lock_path(read, pack)
     if not path.exists():
@@ -88,13 +88,3 @@ def verify(
     else:
         click.echo(f"{path}: {summary(found)}")
     return 0 if found.passes(tolerance) else 1
-
-
-def _pairs(texts: tuple[str, ...]) -> dict[str, str]:
-    pairs = {}
-    for text in texts:
-        name, _, value = (piece.strip() for piece in text.partition("="))
-        if not name or not value:
-            raise InputError(Fault("--limit", f"'{text}'", "NAME=VALUE, for instance pitch=2"))
-        pairs[name] = value
-    return pairs

@@ -52,7 +52,7 @@ ASPECTS: Mapping[str, Aspect] = MappingProxyType(
         "pitch": Aspect("settled pitch", "Hz", ("settled_hz",), lambda m: m.settled_hz, "cents", cents, _HERTZ),
         "start": Aspect("start pitch", "Hz", ("start_hz",), lambda m: m.start_hz, "cents", cents, _HERTZ),
         "drop": Aspect(
-            "start over settled pitch",
+            "pitch drop",
             "semitones",
             ("start_hz", "settled_hz"),
             GOALS["drop"].measured,

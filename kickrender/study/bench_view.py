@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-import csv
-import io
 import math
 from collections.abc import Sequence
 from pathlib import Path
@@ -15,11 +13,11 @@ from numpy.typing import NDArray
 from kickrender.circuit import Circuit, ResolvedCircuit
 from kickrender.engine import Pole, poles, response, rest_state, solve
 from kickrender.engine.waves import voltage_at
-from kickrender.errors import Fault, InputError, KickrenderError, WriteError, nearest_name
-from kickrender.sound.files import write_whole
+from kickrender.errors import Fault, InputError, KickrenderError, nearest_name
 from kickrender.sound.options import SoundOptions
 from kickrender.sound.render import hear_each
 from kickrender.study import pictures
+from kickrender.study.files import open_folder
 from kickrender.study.sides import Settings
 
 Floats = NDArray[np.float64]
@@ -93,15 +91,6 @@ def response_table(circuit: ResolvedCircuit, source: str, net: str) -> list[dict
     ]
 
 
-def write_table(rows: Sequence[dict[str, float]], path: Path) -> None:
-    """Rows of one shape as CSV, names in the first line; raises WriteError."""
-    text = io.StringIO()
-    writer = csv.DictWriter(text, list(rows[0]), lineterminator="\n")
-    writer.writeheader()
-    writer.writerows(rows)
-    write_whole(path, text.getvalue().encode())
-
-
 def write_pictures(
     circuit: Circuit, settings: Settings, folder: Path, path: tuple[str, str] | None = None
 ) -> list[str]:
@@ -116,10 +105,7 @@ def write_pictures(
     WriteError
         If the folder cannot be written.
     """
-    try:
-        folder.mkdir(parents=True, exist_ok=True)
-    except OSError as error:
-        raise WriteError(f"{folder}: {error.strerror or error}") from None
+    open_folder(folder)
     options = SoundOptions()
     (take,) = hear_each([(circuit, settings)], options)
     if isinstance(take, KickrenderError):

@@ -10,15 +10,16 @@ from typing import Any
 import numpy as np
 
 from kickrender.engine import ENGINE_VERSION
-from kickrender.errors import Fault, InputError, WriteError
+from kickrender.errors import Fault, InputError
 from kickrender.sound.files import write_whole
 from kickrender.sound.finish import quantise
 from kickrender.sound.options import SoundOptions
-from kickrender.sound.sidecar import check_ours, json_bytes
+from kickrender.sound.sidecar import json_bytes
 from kickrender.sound.wav import pcm_sha256, write_wav
 from kickrender.study import pictures
 from kickrender.study.blind import DEFAULT_TRIALS, BlindSound, blind_page
 from kickrender.study.differences import measurement_differences, netlist_difference, null_residual
+from kickrender.study.files import open_folder
 from kickrender.study.sides import Heard, Side, hear_sides
 
 SCHEMA = "kickrender comparison"
@@ -86,11 +87,7 @@ def write_comparison(comparison: Comparison, folder: Path, trials: int = DEFAULT
         If the folder cannot be made or written, or its compare.json is somebody else's.
     """
     pages = _blind_pages(comparison, trials)
-    try:
-        folder.mkdir(parents=True, exist_ok=True)
-    except OSError as error:
-        raise WriteError(f"{folder}: {error.strerror or error}") from None
-    check_ours(folder / JSON_NAME)
+    open_folder(folder, JSON_NAME)
     heard, names = comparison.heard, []
     rate_hz = heard[0].rate_hz
     for number, side in enumerate(heard, 1):

@@ -13,6 +13,9 @@ from kickrender.study.aspects import ASPECTS
 _END = re.compile(r"([+-]?(?:[0-9]+\.?[0-9]*|\.[0-9]+)(?:[eE][+-]?[0-9]{1,3})?)?\s*([A-Za-z%]*)")
 
 
+KEPT, BELOW, ABOVE, NONE = "kept", "below", "above", "no value"
+
+
 @dataclass(frozen=True)
 class Limit:
     """Bounds of one aspect, both included; infinite where there is none.
@@ -27,11 +30,13 @@ class Limit:
     relative: bool = False
     text: str = ""
 
-    def keeps(self, value: float | None, exact: float | None) -> bool:
-        """Whether a value lies within; none never does. `exact` is the value of exact parts."""
+    def verdict(self, value: float | None, exact: float | None) -> str:
+        """KEPT, or how a value misses: BELOW, ABOVE, or NONE, where there is none. `exact` is that of exact parts."""
         if self.relative and value is not None:
             value = None if exact is None else ASPECTS[self.aspect].change(exact, value)
-        return value is not None and self.low <= value <= self.high
+        if value is None:
+            return NONE
+        return BELOW if value < self.low else ABOVE if value > self.high else KEPT
 
 
 def read_limits(texts: Sequence[str], place: str) -> tuple[Limit, ...]:

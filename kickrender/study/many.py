@@ -14,6 +14,7 @@ from kickrender.pack.workers import Progress, run_batches
 from kickrender.sound.measure import Measurements, measure
 from kickrender.sound.options import SoundOptions
 from kickrender.sound.render import Settings, hear_each
+from kickrender.study.aspects import ASPECTS
 
 EXACT = Deviations({})
 FEWEST_PER_WORKER = 200  # loading the solver takes a worker about as long as solving and measuring this many
@@ -107,3 +108,9 @@ def _measure_batch(batch: _Batch, stop: Stop) -> Iterator[tuple[int, Reading]]:
             yield number, Reading(measure(take.samples, batch.options.rate_hz, only=batch.wanted))
         except KickrenderError as error:
             yield number, Reading(failure=str(error))
+
+
+def values_of(reading: Reading, aspects: Sequence[str]) -> dict[str, float | None]:
+    """The aspects' values of a reading; None where it has none."""
+    found = reading.measurements
+    return {name: None if found is None else ASPECTS[name].measured(found) for name in aspects}

@@ -3,22 +3,22 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Any
 
 import numpy as np
 
 from kickrender.circuit import Circuit
 from kickrender.circuit.spread import Deviations, Spread, deviations, read_spread, spread_faults
-from kickrender.errors import Fault, InputError, KickrenderError, MeasurementError
+from kickrender.errors import Fault, InputError, MeasurementError
 from kickrender.pack.workers import Progress
 from kickrender.sound.options import SoundOptions
 from kickrender.sound.render import Settings
 from kickrender.study.aspects import ASPECTS, USUAL
-from kickrender.study.limits import Limit
-from kickrender.study.many import Reading, Variant, measure_many
+from kickrender.study.limits import KEPT, Limit
+from kickrender.study.many import Variant, measure_many, values_of
 
-FEWEST_DRAWS, MOST_DRAWS = 2, 10_000
+FEWEST_BUILDS, MOST_BUILDS = 2, 10_000
 PERCENTILES = (5, 25, 50, 75, 95)
 CONFIDENCE = 0.95
 # What a drawer of film resistors, film capacitors, coils and tracks holds. Common practice, no source.
@@ -26,30 +26,31 @@ USUAL_SPREAD = {"resistor": "1%", "capacitor": "5%", "inductor": "10%", "pot": "
 USUAL_SEED = "1"
 
 
-class NothingKept(KickrenderError):
-    """No draw lies within every limit."""
-
-
 @dataclass(frozen=True)
-class Draw:
+class Build:
     """One build: what its parts deviate by, and what it sounds like.
 
     number : from 1; take `number` of a pack of the same seed and tolerances has the same parts.
     values : aspect -> value; None where the sound has none.
-    missed : aspects whose limits it does not keep.
+    verdicts : limited aspect -> what its limit says.
     failure : why there is no sound, in words; else empty.
     """
 
     number: int
     drawn: Deviations
     values: Mapping[str, float | None]
-    missed: tuple[str, ...] = ()
+    verdicts: Mapping[str, str] = field(default_factory=dict)
     failure: str = ""
+
+    @property
+    def kept(self) -> bool:
+        """Whether it sounds and keeps every limit."""
+        return not self.failure and all(verdict == KEPT for verdict in self.verdicts.values())
 
 
 @dataclass(frozen=True)
 class Yield:
-    """How many draws keep every limit, and the exact (Clopper and Pearson's) confidence interval of that share."""
+    """How many builds keep every limit, and the exact (Clopper and Pearson's) confidence interval of that share."""
 
     kept: int
     count: int
@@ -58,6 +59,7 @@ class Yield:
 
     @property
     def share(self) -> float:
+        """Of all draws, from 0 to 1."""
         return self.kept / self.count
 
 
@@ -73,22 +75,22 @@ class Tolerance:
     spread: Spread
     limits: tuple[Limit, ...]
     exact: Mapping[str, float | None]
-    draws: tuple[Draw, ...]
-
-    @property
-    def aspects(self) -> tuple[str, ...]:
-        return tuple(self.exact)
+    builds: tuple[Build, ...]
 
     def values(self, aspect: str) -> list[float]:
-        """The aspect's value of every draw that has one."""
-        return [value for draw in self.draws if (value := draw.values.get(aspect)) is not None]
+        """The aspect's value of every build that has one."""
+        return [value for build in self.builds if (value := build.values[aspect]) is not None]
 
-    @property
-    def kept(self) -> Yield:
+    def changes(self, aspect: str) -> list[float]:
+        """How far each of these values is from that of exact parts; empty where these have none."""
+        exact = self.exact[aspect]
+        return [] if exact is None else [ASPECTS[aspect].change(exact, value) for value in self.values(aspect)]
+
+    def achieved(self) -> Yield:
         """The yield. Source of the interval: C. J. Clopper and E. S. Pearson (1934), by scipy.stats.binomtest."""
         from scipy.stats import binomtest  # slow to load
 
-        kept, count = sum(not draw.missed and not draw.failure for draw in self.draws), len(self.draws)
+        kept, count = sum(build.kept for build in self.builds), len(self.builds)
         interval = binomtest(kept, count).proportion_ci(CONFIDENCE, "exact")
         return Yield(kept, count, float(interval.low), float(interval.high))
 
@@ -122,6 +124,12 @@ def read_study_spread(
     return spread
 
 
+def check_count(count: int, place: str) -> None:
+    """Refuse a number of builds out of range; raises InputError."""
+    if not FEWEST_BUILDS <= count <= MOST_BUILDS:
+        raise InputError(Fault(place, f"found {count}", f"{FEWEST_BUILDS} to {MOST_BUILDS:,} builds"))
+
+
 def tolerance(
     circuit: Circuit,
     spread: Spread,
@@ -138,7 +146,7 @@ def tolerance(
     Parameters
     ----------
     count : int
-        Draws, 2 to 10,000.
+        Builds, 2 to 10,000.
     limits : sequence of Limit
         What a build has to keep; aspects beyond the usual are measured when a limit asks for them.
     jobs : int
@@ -153,10 +161,9 @@ def tolerance(
     SolveError, MeasurementError
         If the circuit of exact parts cannot be solved, or is silent.
     """
-    if not FEWEST_DRAWS <= count <= MOST_DRAWS:
-        raise InputError(Fault("--count", f"found {count}", f"{FEWEST_DRAWS} to {MOST_DRAWS} draws"))
+    check_count(count, "count")
     settings = settings or {}
-    resolved = circuit.resolve(settings, "--set")
+    resolved = circuit.resolve(settings)
     aspects = tuple(dict.fromkeys((*USUAL, *(limit.aspect for limit in limits))))
     wanted = tuple(dict.fromkeys(field for aspect in aspects for field in ASPECTS[aspect].fields))
     drawn = [deviations(circuit, spread, number) for number in range(1, count + 1)]
@@ -164,18 +171,13 @@ def tolerance(
     nominal, *readings = measure_many(circuit, variants, wanted, options, jobs=jobs, progress=progress)
     if nominal.measurements is None or nominal.measurements.peak_dbfs is None:
         raise MeasurementError(nominal.failure or f"'{circuit.name}' is silent: there is nothing to measure")
-    exact = _values(aspects, nominal)
-    draws = []
+    exact = values_of(nominal, aspects)
+    builds = []
     for number, (each, reading) in enumerate(zip(drawn, readings, strict=True), 1):
-        values = _values(aspects, reading)
-        missed = tuple(x.aspect for x in limits if not x.keeps(values[x.aspect], exact[x.aspect]))
-        draws.append(Draw(number, each, values, missed, reading.failure))
-    return Tolerance(circuit, resolved.settings, spread, tuple(limits), exact, tuple(draws))
-
-
-def _values(aspects: Sequence[str], reading: Reading) -> dict[str, float | None]:
-    found = reading.measurements
-    return {name: None if found is None else ASPECTS[name].measured(found) for name in aspects}
+        values = values_of(reading, aspects)
+        verdicts = {limit.aspect: limit.verdict(values[limit.aspect], exact[limit.aspect]) for limit in limits}
+        builds.append(Build(number, each, values, verdicts, reading.failure))
+    return Tolerance(circuit, resolved.settings, spread, tuple(limits), exact, tuple(builds))
 
 
 def statistics(values: Sequence[float]) -> dict[str, float] | None:
