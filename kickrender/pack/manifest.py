@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import csv
+import hashlib
 import io
 from collections.abc import Mapping
 from dataclasses import asdict
@@ -10,6 +11,7 @@ from pathlib import Path
 from typing import Any
 
 from kickrender.errors import WriteError
+from kickrender.pack.license import LICENSE_NAME, license_bytes
 from kickrender.pack.records import Plan
 from kickrender.pack.sidecar import json_path, sound_path
 from kickrender.sound.files import write_whole
@@ -40,11 +42,25 @@ def write_manifest(plan: Plan, folder: Path, failed: Mapping[str, str]) -> None:
         "sound": asdict(plan.options),
         "level": None if plan.level is None else asdict(plan.level),
         "shares_gain_along": list(plan.together),
+        **license_facts(plan),
         "hits": hits,
         "failed": [{"name": name, "reason": reason} for name, reason in failed.items()],
     }
-    write_whole(folder / CSV_NAME, _csv(hits))
+    write_whole(folder / CSV_NAME, _csv(hits, plan.tags.license))
     write_whole(folder / JSON_NAME, json_bytes(manifest))
+
+
+def license_facts(plan: Plan) -> dict[str, Any]:
+    """The licence and where its words are; nothing for a pack without one."""
+    if not plan.tags.license:
+        return {}
+    facts = {
+        "name": plan.tags.license,
+        "credits": list(plan.tags.credits),
+        "file": LICENSE_NAME,
+        "sha256": hashlib.sha256(license_bytes(plan)).hexdigest(),
+    }
+    return {"license": facts}
 
 
 def remove_manifest(folder: Path) -> None:
@@ -86,14 +102,15 @@ def _entry(plan: Plan, folder: Path, name: str) -> dict[str, Any]:
     }
 
 
-def _csv(hits: list[dict[str, Any]]) -> bytes:
-    """One row a hit: file, axes, measurements, gain, digest; a hit without an axis leaves its cell empty."""
+def _csv(hits: list[dict[str, Any]], license: str) -> bytes:
+    """One row a hit: file, axes, measurements, gain, digest, licence; a hit without an axis leaves its cell empty."""
+    last = ["license"] if license else []
     axes = list(dict.fromkeys(name for hit in hits for name in hit["axes"]))
     measures = list(dict.fromkeys(name for hit in hits for name in hit["measurements"]))
     text = io.StringIO()
     table = csv.writer(text, lineterminator="\n")
-    table.writerow(["file", *axes, *measures, "gain_db", "pcm_sha256"])
+    table.writerow(["file", *axes, *measures, "gain_db", "pcm_sha256", *last])
     for hit in hits:
         row = [hit["axes"].get(name, "") for name in axes] + [hit["measurements"].get(name) for name in measures]
-        table.writerow([hit["file"], *row, hit["gain_db"], hit["pcm_sha256"]])
+        table.writerow([hit["file"], *row, hit["gain_db"], hit["pcm_sha256"], *([license] if license else [])])
     return text.getvalue().encode()

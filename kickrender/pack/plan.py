@@ -82,6 +82,7 @@ def plan_pack(pack: Pack) -> Plan:
         level=pack.level,
         together=together,
         tags=pack.tags,
+        license_text=pack.license_text,
         hits=tuple(_hits(pack, circuits, drafts, names)),
     )
 

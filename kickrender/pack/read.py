@@ -1,10 +1,10 @@
 """Reads pack files: from a shipped name, a path or a text to a checked pack, reporting every fault at once.
 
 A pack file says which circuit to strike, along which axes to walk, and how the files are to sound and be called:
-`title`, `about`, `circuit` (a name or path, or a list of them), `[sound]`, `[level]`, `[files]`, `[tags]`, and what
-`read_block` reads. With `[[blocks]]` it holds several designs: each block may have a `circuit`, `axes` and `fixed` of
-its own, which add to or replace what the whole file says, and a `design`, `layers`, `takes` and `hits` of its own in
-place of the file's.
+`title`, `about`, `circuit` (a name or path, or a list of them), `[sound]`, `[level]`, `[files]`, `[tags]`, `[license]`,
+and what `read_block` reads. With `[[blocks]]` it holds several designs: each block may have a `circuit`, `axes` and
+`fixed` of its own, which add to or replace what the whole file says, and a `design`, `layers`, `takes` and `hits` of its
+own in place of the file's.
 """
 
 from __future__ import annotations
@@ -18,6 +18,7 @@ from kickrender.circuit.shipped import shipped_packs
 from kickrender.circuit.source import Source, parse_source, read_source
 from kickrender.circuit.values import shown
 from kickrender.errors import InputError, nearest_name
+from kickrender.pack.license import read_license
 from kickrender.pack.read_block import BLOCK_KEYS, BlockReading
 from kickrender.pack.reading import Reading, Where
 from kickrender.pack.records import CIRCUIT_AXIS, Block, Pack
@@ -25,7 +26,7 @@ from kickrender.pack.tags import read_tags
 from kickrender.sound.level import Level, read_level
 from kickrender.sound.options import SoundOptions, read_options
 
-KEYS = ("title", "about", "sound", "level", "files", "tags", *BLOCK_KEYS, "blocks")
+KEYS = ("title", "about", "sound", "level", "files", "tags", "license", *BLOCK_KEYS, "blocks")
 FILE_KEYS = ("name",)
 
 
@@ -64,7 +65,7 @@ class _Reader(Reading):
         level, together = self.level()
         template = self.template()
         blocks = self.blocks()
-        tags = read_tags(self)
+        tags, license_text = read_license(self, self.folder, read_tags(self))
         for name in together:
             if name not in self.walked:
                 allowed, nearest = ", ".join(self.walked), nearest_name(name, self.walked)
@@ -82,6 +83,7 @@ class _Reader(Reading):
             template=template,
             template_place=self.at("files", "name"),
             tags=tags,
+            license_text=license_text,
         )
 
     def level(self) -> tuple[Level | None, tuple[str, ...]]:

@@ -116,13 +116,19 @@ class Block:
 
 @dataclass(frozen=True)
 class Tags:
-    """What every file of a pack says of its making; empty means nothing. date : yyyy-mm-dd."""
+    """What every file of a pack says of its making; empty means nothing.
+
+    date : yyyy-mm-dd.
+    license, credits : the licence's short name, and a line for each who is credited.
+    """
 
     artist: str = ""
     genre: str = ""
     comment: str = ""
     copyright: str = ""
     date: str = ""
+    license: str = ""
+    credits: tuple[str, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -132,6 +138,7 @@ class Pack:
     template : the file names' template; `template_place` is where it stands.
     path : None for a text that is no file.
     level : None when none is asked for.
+    license_text : the licence's words; empty when only its name is given, in `tags`.
     together : axes along which hits share one gain.
     """
 
@@ -145,6 +152,7 @@ class Pack:
     template: str
     template_place: str
     tags: Tags = Tags()
+    license_text: str = ""
 
 
 @dataclass(frozen=True)
@@ -207,3 +215,4 @@ class Plan:
     hits: tuple[Hit, ...]
     left_out: tuple[Hit, ...] = ()
     tags: Tags = Tags()
+    license_text: str = ""

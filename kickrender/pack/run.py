@@ -11,6 +11,7 @@ from pathlib import Path
 from kickrender.errors import MeasurementError, WriteError
 from kickrender.pack.batches import MOST_HITS, batches_of, groups_of
 from kickrender.pack.estimate import check_room
+from kickrender.pack.license import check_license, write_license
 from kickrender.pack.manifest import remove_manifest, stale_files, write_manifest
 from kickrender.pack.records import Hit, Plan
 from kickrender.pack.render import Outcome, gain_of, measure_batch, render_batch
@@ -73,6 +74,7 @@ def render_plan(plan: Plan, folder: Path, jobs: int = 1, progress: Progress = la
     check_room(plan, folder, missing)
     _open_folder(folder)
     sheet_of(folder)  # somebody else's index.html is told of now, not after the rendering
+    check_license(plan, folder)
     kept = {hit.name for hit in plan.hits} - {hit.name for hit in missing}
     stale = stale_files(plan, folder)
     progress(len(kept))
@@ -85,6 +87,7 @@ def render_plan(plan: Plan, folder: Path, jobs: int = 1, progress: Progress = la
                 raise WriteError(outcome.failure)
             if outcome.failure:
                 failed[outcome.name] = outcome.failure
+    write_license(plan, folder)
     write_manifest(plan, folder, failed)
     write_sheets(folder)
     rendered = tuple(hit.name for hit in missing if hit.name not in failed)

@@ -8,12 +8,13 @@ from dataclasses import dataclass
 from typing import Any
 
 from kickrender.circuit.values import format_value
+from kickrender.pack.license import LICENSE_NAME
 from kickrender.pack.names import plain
 from kickrender.pack.thumbnails import COLUMNS, Scale, Thumbnail
 from kickrender.sound.page.frame import page_bytes
 
 SHEET_NAME = "index.html"
-COMPANIONS = ("LICENSE.txt",)  # files that the sheet points at when they are there
+COMPANIONS = (LICENSE_NAME,)  # files that the sheet points at when they are there
 
 
 @dataclass(frozen=True)

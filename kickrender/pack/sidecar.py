@@ -64,6 +64,11 @@ def is_done(plan: Plan, folder: Path, hit: Hit) -> bool:
     return pcm_digest_of_file(sound_path(folder, hit.name, plan.options.ending)) == facts.get("pcm", {}).get("sha256")
 
 
+def tags_facts(tags: Tags) -> dict[str, Any]:
+    """What is said of a pack's making, as JSON has it."""
+    return {key: list(value) if isinstance(value, tuple) else value for key, value in asdict(tags).items() if value}
+
+
 def _place(title: str, together: Sequence[str], tags: Tags, hit: Hit) -> dict[str, Any]:
     """Which hit of a pack this is, as a sidecar says it."""
     place: dict[str, Any] = {
@@ -73,7 +78,7 @@ def _place(title: str, together: Sequence[str], tags: Tags, hit: Hit) -> dict[st
         "shares_gain_along": list(together),
     }
     if tags != Tags():
-        place["tags"] = {key: value for key, value in asdict(tags).items() if value}
+        place["tags"] = tags_facts(tags)
     if hit.goals:
         place["goals"] = {kind: dict(facts) for kind, facts in hit.goals.items()}
     if hit.velocity:

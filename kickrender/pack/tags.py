@@ -5,7 +5,6 @@ from __future__ import annotations
 import datetime
 import os
 from collections.abc import Mapping
-from dataclasses import asdict
 from typing import TYPE_CHECKING, Any
 
 from kickrender.circuit.values import shown
@@ -17,7 +16,7 @@ from kickrender.sound.wav import Chunk
 if TYPE_CHECKING:
     from kickrender.sound.render import Sound  # loads the compiler, which reading a pack does not need
 
-KEYS = tuple(asdict(Tags()))
+KEYS = ("artist", "genre", "comment", "copyright", "date")
 SOFTWARE = "kickrender"
 EPOCH_VARIABLE = "SOURCE_DATE_EPOCH"  # seconds since 1970, as reproducible builds set it
 _HISTORY_WORDS = {"pcm16": "A=PCM,F={rate},W=16,M={mode}", "pcm24": "A=PCM,F={rate},W=24,M={mode}"}
@@ -27,7 +26,7 @@ def read_tags(reading: Reading) -> Tags:
     """The [tags] table; the date, where it is not given, from SOURCE_DATE_EPOCH, never from the clock."""
     given = reading.table(reading.raw, (), "tags")
     reading.unknown(given, KEYS, "tags")
-    texts: dict[str, str] = {}
+    texts: dict[str, Any] = {}
     for key in KEYS:
         value = given.get(key, "")
         if key == "date" and isinstance(value, datetime.date):
@@ -48,11 +47,17 @@ def read_tags(reading: Reading) -> Tags:
 
 def texts_of(tags: Tags, title: str, hit: Hit) -> dict[str, str]:
     """What a hit's file says in words, in any format."""
+    licensed = f"licence: {tags.license}" if tags.license else ""  # LIST/INFO has a place for the copyright only
     return {
         "title": hit.name.rpartition("/")[2],
+        "artist": tags.artist or "; ".join(tags.credits),
         "album": title,
+        "genre": tags.genre,
+        "comment": tags.comment,
+        "copyright": "; ".join(text for text in (tags.copyright, licensed) if text),
+        "license": tags.license,
+        "date": tags.date,
         "software": SOFTWARE,
-        **{key: value for key, value in asdict(tags).items() if value},
     }
 
 
