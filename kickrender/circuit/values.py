@@ -3,6 +3,7 @@
     parse_value("4.7 kohm", "ohm")  -> 4700.0
     parse_value("3n3", "F")         -> 3.3e-09
     format_value(18e-9, "F")        -> "18n"
+    letter_code(4700.0, "ohm")      -> "4K7"
 
 Every text is rebuilt as one decimal literal and converted once, so that "4n7" is the float 4.7e-9 and not
 4.7 * 1e-9, which is another number. `M` is mega and `m` is milli; `F` after a number is farad, never femto.
@@ -70,6 +71,7 @@ UNITS: Mapping[str, Unit] = MappingProxyType(
         "H": Unit({"H": 0}, "'10m', '10 mH', '4m7'", "pnum", {"n": -9, **_MICRO, "m": -3, "H": 0}, silent=True),
         "V": Unit({"V": 0}, "'5V', '100 mV'", "pnumk"),
         "A": Unit({"A": 0}, "'2.5n', '10 fA'", "fpnum"),
+        "W": Unit({"W": 0}, "'250mW'", "pnumk"),
         "S": Unit({"S": 0}, "'1mS', '100 uS'", "pnum"),
         "s": Unit({"s": 0}, "'4ms', '2 us'", "pnum"),
         "Hz": Unit({"Hz": 0}, "'100Hz', '3 MHz'", "mkMG"),
@@ -154,6 +156,28 @@ def format_value(value: float, unit: str, digits: int | None = None) -> str:
     if "." in mantissa:
         mantissa = mantissa.rstrip("0").rstrip(".")
     return f"{mantissa}{_PREFIX_OF[exponent]}{name}"
+
+
+def letter_code(value: float, unit: str) -> str:
+    """A value above zero in the letter code of IEC 60062, as a part is marked: "4K7", "R47", "3n3", "1M0".
+
+    The letter stands where the decimal point would, behind one to three digits; below the smallest letter (R, p, n) in
+    front of them. At least two characters beside the letter's place are written, as in "1K0" and "R10", but "10K".
+    `parse_value` reads back exactly the same float.
+
+    Parameters
+    ----------
+    unit : str
+        "ohm", "F" or "H" (inductors are marked alike in practice).
+    """
+    letters = {power: letter for letter, power in UNITS[unit].code.items() if letter not in "Lku\u03bc"}
+    if unit == "ohm":
+        letters = {power: letter for power, letter in letters.items() if power >= 0}
+    number = decimal.Decimal(repr(float(value)))
+    power = min(max(3 * (number.adjusted() // 3), min(letters)), max(letters))
+    whole, _, part = f"{number.scaleb(-power):f}".partition(".")
+    whole, part = whole if int(whole) else "", part.rstrip("0")
+    return f"{whole}{letters[power]}{part.ljust(2 - len(whole), '0')}"
 
 
 def shown(raw: object) -> str:

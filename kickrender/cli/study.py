@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import click
 
+from kickrender.cli.study_parts import parts
 from kickrender.cli.study_sensitivity import sensitivity
 from kickrender.cli.study_tolerance import tolerance
 from kickrender.cli.usage import Commands
@@ -17,8 +18,9 @@ def study() -> None:
     Examples:
       kickrender study tolerance bridged-t --limit pitch=-30..30cents
       kickrender study sensitivity bridged-t
+      kickrender study parts bridged-t
     """
 
 
-for command in (tolerance, sensitivity):
+for command in (tolerance, sensitivity, parts):
     study.add_command(command)

@@ -7,7 +7,16 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from kickrender.circuit.values import PREFIXES, UNITS, format_value, parse_angle, parse_temperature, parse_value, shown
+from kickrender.circuit.values import (
+    PREFIXES,
+    UNITS,
+    format_value,
+    letter_code,
+    parse_angle,
+    parse_temperature,
+    parse_value,
+    shown,
+)
 from kickrender.errors import InputError
 
 READ = [
@@ -166,6 +175,11 @@ def test_writes_rounded() -> None:
 @given(st.floats(allow_nan=False, allow_infinity=False), st.sampled_from([unit for unit in UNITS if unit != "K"]))
 def test_what_is_written_reads_back_exactly(value: float, unit: str) -> None:
     assert parse_value(format_value(value, unit), unit) == value
+
+
+@given(st.floats(1e-15, 1e15), st.sampled_from(["ohm", "F", "H"]))
+def test_a_letter_code_reads_back_exactly(value: float, unit: str) -> None:
+    assert parse_value(letter_code(value, unit), unit) == value
 
 
 @given(

@@ -10,7 +10,7 @@ from pathlib import Path
 
 import pytest
 
-from kickrender.circuit.values import format_value, parse_value
+from kickrender.circuit.values import format_value, letter_code, parse_value
 from kickrender.errors import InputError
 
 DATA = json.loads(Path(__file__).with_name("data").joinpath("preferred_values.json").read_text("utf-8"))
@@ -55,3 +55,31 @@ def test_refuses_tolerance_letters(code: str, value: float, tolerance: float) ->
     with pytest.raises(InputError, match="value: "):
         parse_value(code, "ohm")
     assert parse_value(code[:-1], "ohm") == value
+
+
+# The standard's own way of writing; its older forms (n33 for 330p, L47 for R00047) are read and not written.
+STANDARD = [
+    (UNIT[kind], code, value)
+    for kind, rows in DATA["decode"].items()
+    for code, value, source in rows
+    if source == "std" and value > 0.0
+]
+OTHER_FORMS = {"L47": "R00047", "n33": "330p", "1G": "1G0"}
+
+
+@pytest.mark.parametrize(("unit", "code", "value"), STANDARD)
+def test_writes_letter_codes(unit: str, code: str, value: float) -> None:
+    """IEC 60062, table of codes for resistance and capacitance."""
+    assert letter_code(value, unit) == OTHER_FORMS.get(code, code)
+
+
+@pytest.mark.parametrize("series", DATA["series"])
+@pytest.mark.parametrize("unit", ["ohm", "F", "H"])
+def test_written_codes_read_back(series: str, unit: str) -> None:
+    """IEC 60063 series over twelve decades: the code gives back exactly the float it was written for."""
+    for preferred in DATA["series"][series]:
+        for power in range(-14, 9):
+            value = float(Decimal(str(preferred)).scaleb(power))
+            code = letter_code(value, unit)
+            assert parse_value(code, unit) == value
+            assert sum(not letter.isdigit() for letter in code) == 1
