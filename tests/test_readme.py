@@ -51,6 +51,15 @@ def test_every_option_of_render_is_described() -> None:
         assert f"| `{name}" in README
 
 
+def test_every_option_of_every_study_is_described() -> None:
+    section = README.split("### Studies")[1].split("\n## ")[0]
+    for name, command in kickrender.commands["study"].commands.items():
+        assert f"| `kickrender study {name}" in README
+        options = {option for parameter in command.params for option in parameter.opts if option[:2] == "--"}
+        for option in options:
+            assert re.search(rf"`{option}\b", section), f"study {name} {option}"
+
+
 def test_the_builds_own_line_is_the_readmes() -> None:
     assert 'grep -m1 -F ".[test]" README.md' in (ROOT / ".ci" / "run").read_text()
     (line,) = [line for line in README.splitlines() if ".[test]" in line]

@@ -42,7 +42,7 @@ class StudyFailed(KickrenderError):
     metavar="NAME=5%",
     multiple=True,
     help="Tolerance of a kind (resistor), a part (R1), a device's number (npn.forward_gain) or the temperature (3C)."
-    "  [default: resistor=1%, capacitor=5%, inductor=10%, pot=20%]",
+    "  [default: resistors 1 %, capacitors 5 %, coils 10 %, pots 20 %]",
 )
 @click.option("--distribution", default="normal", show_default=True, help="Of values in their tolerance: or uniform.")
 @click.option(

@@ -22,7 +22,14 @@ FEWEST_BUILDS, MOST_BUILDS = 2, 10_000
 PERCENTILES = (5, 25, 50, 75, 95)
 CONFIDENCE = 0.95
 # What a drawer of film resistors, film capacitors, coils and tracks holds. Common practice, no source.
-USUAL_SPREAD = {"resistor": "1%", "capacitor": "5%", "inductor": "10%", "pot": "20%"}
+USUAL_SPREAD = {
+    "resistor": "1%",
+    "capacitor": "5%",
+    "pot": "20%",
+    "inductor": "10%",
+    "transformer.primary_inductance": "10%",
+    "transformer.secondary_inductance": "10%",
+}
 USUAL_SEED = "1"
 
 
@@ -107,20 +114,26 @@ def read_study_spread(
     Parameters
     ----------
     given : mapping
-        "resistor" -> "1%", "npn.forward_gain" -> "30%", "temperature" -> "3C"; USUAL_SPREAD when empty.
+        "resistor" -> "1%", "npn.forward_gain" -> "30%", "temperature" -> "3C"; when empty, what USUAL_SPREAD says of
+        the kinds of parts that the circuit has.
 
     Raises
     ------
     InputError
-        With every fault.
+        With every fault, or when nothing of the circuit would deviate.
     """
 
     def where(*keys: str) -> str:
         return "--distribution" if keys == ("distribution",) else " ".join((place, ".".join(keys)))
 
-    spread = read_spread(given or USUAL_SPREAD, seed, distribution, where)
+    kinds = {part.kind for part in circuit.parts.values()}
+    usual = {name: share for name, share in USUAL_SPREAD.items() if name.split(".")[0] in kinds}
+    spread = read_spread(given or usual, seed, distribution, where)
     if faults := spread_faults(spread, [circuit], where):
         raise InputError(faults)
+    if not deviations(circuit, spread, 1).flat:
+        found = f"nothing in '{circuit.name}' deviates" + (f" by {', '.join(given)}" if given else "")
+        raise InputError(Fault(place, found, f"a tolerance of one of {', '.join(sorted(kinds))}, or of a part"))
     return spread
 
 

@@ -185,12 +185,23 @@ def test_silence_is_refused():
         ({"resistor": "101%"}, "normal", "--spread resistor: a tolerance of 101 %"),
         ({"resistor": "much"}, "normal", "--spread resistor: 'much' is not a tolerance"),
         ({"temperature": "99C"}, "normal", "--spread temperature: '99C' is out of range"),
+        (
+            {"inductor": "1%"},
+            "normal",
+            "--spread: nothing in 'bell' deviates by inductor; allowed: a tolerance of one of",
+        ),
         ({}, "gauss", "--distribution: unknown word 'gauss'; allowed: normal, uniform"),
     ],
 )
 def test_spreads_that_are_none_are_told(given, distribution, message):
     with pytest.raises(InputError, match=message):
         read_study_spread(BELL, given, "1", distribution, "--spread")
+
+
+def test_the_usual_spread_is_of_the_kinds_there_are():
+    assert read_study_spread(BELL, {}).tolerances == {"resistor": 0.01, "capacitor": 0.05}
+    coil = {"transformer.primary_inductance", "transformer.secondary_inductance"}
+    assert set(read_study_spread(read_circuit("lc"), {}).tolerances) == {"resistor", "capacitor", "pot"} | coil
 
 
 def test_files_hold_all_of_it(tmp_path: Path):
