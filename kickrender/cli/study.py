@@ -1,4 +1,4 @@
-"""`kickrender study`: questions about a circuit that take many renders; one file per question."""
+"""`kickrender study`: a designer's questions about a circuit; one file per question."""
 
 from __future__ import annotations
 
@@ -10,9 +10,10 @@ from kickrender.cli.study_tolerance import tolerance
 from kickrender.cli.usage import Commands
 
 
-@click.group(cls=Commands)
-def study() -> None:
-    """Ask what a circuit does when its parts are not what they say.
+@click.group(cls=Commands, invoke_without_command=True)
+@click.pass_context
+def study(context: click.Context) -> None:
+    """Answer a designer's questions about a circuit.
 
     \b
     Examples:
@@ -20,6 +21,8 @@ def study() -> None:
       kickrender study sensitivity bridged-t
       kickrender study parts bridged-t
     """
+    if context.invoked_subcommand is None:
+        click.echo(context.get_help())
 
 
 for command in (tolerance, sensitivity, parts):

@@ -31,11 +31,11 @@ LOOKED_AT = ("pitch", "start", "decay", "loudness")  # as in kickrender.study.se
 def sensitivity(
     circuit: str, settings: tuple[str, ...], by: str, top: int, out: Path | None, jobs: str | None, as_json: bool
 ) -> None:
-    """Rank the parts of CIRCUIT by how many cents, ms and dB go with a percent of each.
+    """Rank the parts of CIRCUIT by what a percent of each does.
 
-    Every number of every part (values, a pot's track, a device's gain, saturation current ...) is moved half a percent
-    down and up, and the sounds are measured. The noise of measuring is measured too; what lies below it is shown as
-    "<" and that noise floor.
+    Tells cents of pitch and start pitch, milliseconds of decay and dB of loudness. Every number of every part (values,
+    a pot's track, a device's gain, saturation current ...) is moved half a percent down and up, and the sounds are
+    measured. The noise of measuring is measured too; what lies below it is shown as "<" and that noise floor.
 
     \b
     Examples:
@@ -50,10 +50,13 @@ def sensitivity(
     loaded = read_circuit(circuit)
     loaded.resolve(turned, "--set")
     ready_solver()
+    from kickrender.study.files import open_folder
     from kickrender.study.sensitivity import sensitivity as study_sensitivity
     from kickrender.study.sensitivity import strikes
-    from kickrender.study.sensitivity_report import sensitivity_facts, write_sensitivity
+    from kickrender.study.sensitivity_report import JSON_NAME, sensitivity_facts, write_sensitivity
 
+    if out is not None:
+        open_folder(out, JSON_NAME)  # what is wrong with it is told now, not after the rendering
     with click.progressbar(
         length=strikes(loaded), label=f"striking {loaded.title}", file=sys.stderr, hidden=not sys.stderr.isatty()
     ) as bar:

@@ -35,7 +35,7 @@ class StudyFailed(KickrenderError):
 @click.argument("circuit")
 @set_option
 @click.option("--count", type=int, default=100, show_default=True, help="How many builds.")
-@click.option("--seed", default="1", show_default=True, help="A name or a whole number: other parts from the drawer.")
+@click.option("--seed", default="1", show_default=True, help="A name or a whole number; another one draws other parts.")
 @click.option(
     "--spread",
     "tolerances",
@@ -44,7 +44,9 @@ class StudyFailed(KickrenderError):
     help="Tolerance of a kind (resistor), a part (R1), a device's number (npn.forward_gain) or the temperature (3C)."
     "  [default: resistors 1 %, capacitors 5 %, coils 10 %, pots 20 %]",
 )
-@click.option("--distribution", default="normal", show_default=True, help="Of values in their tolerance: or uniform.")
+@click.option(
+    "--distribution", default="normal", show_default=True, help="How values lie in their tolerance: normal or uniform."
+)
 @click.option(
     "--limit",
     "limits",
@@ -67,12 +69,12 @@ def tolerance(
     jobs: str | None,
     as_json: bool,
 ) -> None:
-    """Build CIRCUIT many times, of parts that deviate: how pitch, drop, decay and loudness spread, and how many builds
-    keep given limits.
+    """Build CIRCUIT many times, of parts that deviate.
 
-    Build 7 has the parts of take 7 of a pack with the same seed and tolerances. A limit may leave one end out; cents
-    of a pitch and dB of a loudness count from what exact parts give. The yield comes with its exact 95 % confidence
-    interval. The exit code is 1 when no build keeps every limit, or when one cannot be solved.
+    Tells how pitch, start pitch, drop, decay and loudness spread, and how many builds keep given limits. Build 7 has
+    the parts of take 7 of a pack with the same seed and tolerances. A limit may leave one end out; cents of a pitch
+    and dB of a loudness count from what exact parts give. The yield comes with its exact 95 % confidence interval. The
+    exit code is 1 when no build keeps every limit, or when one cannot be solved.
 
     \b
     Examples:
@@ -87,6 +89,7 @@ def tolerance(
     turned = read_settings(settings)
     loaded = read_circuit(circuit)
     loaded.resolve(turned, "--set")
+    from kickrender.study.files import open_folder
     from kickrender.study.limits import read_limits
     from kickrender.study.tolerance import check_count, read_study_spread
 
@@ -95,8 +98,10 @@ def tolerance(
     check_count(count, "--count")
     ready_solver()
     from kickrender.study.tolerance import tolerance as study_tolerance
-    from kickrender.study.tolerance_report import headline, tolerance_facts, write_tolerance
+    from kickrender.study.tolerance_report import JSON_NAME, headline, tolerance_facts, write_tolerance
 
+    if out is not None:
+        open_folder(out, JSON_NAME)  # what is wrong with it is told now, not after the rendering
     with click.progressbar(
         length=count + 1, label=f"building {loaded.title}", file=sys.stderr, hidden=not sys.stderr.isatty()
     ) as bar:

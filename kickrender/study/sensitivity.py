@@ -7,8 +7,8 @@ bend: over two percent, a sound's loudest and last half cycles may already be ot
 (1/2 %)^2, far below that scatter.
 
 The scatter itself is measured: all numbers at once walk from one end of the step to the other, some up and some down,
-and what a cubic through the readings leaves over is scatter. A slope within three standard deviations of it says
-nothing; that is the noise floor.
+and what a curve of fifth degree through the readings leaves over is scatter. A slope within three standard deviations
+of it says nothing; that is the noise floor.
 """
 
 from __future__ import annotations
@@ -35,7 +35,7 @@ SPAN_PERCENT = 200.0 * STEP
 DEVIATIONS = 3.0
 LOOKED_AT = ("pitch", "start", "decay", "loudness")
 # Walks in three directions, each some up and some down, that have nothing in common with one another.
-_WALKS, _WALK_POINTS, _WALK_DEGREE = 3, 9, 3
+_WALKS, _WALK_POINTS, _WALK_DEGREE = 3, 13, 5
 
 
 @dataclass(frozen=True)
@@ -183,8 +183,8 @@ def _floor(aspect: str, exact: float | None, walked: Sequence[float | None]) -> 
     changes = np.array([ASPECTS[aspect].change(exact, value) for value in walked if value is not None])
     squares = 0.0
     for readings in changes.reshape(_WALKS, _WALK_POINTS):
-        cubic = np.polynomial.Polynomial.fit(_places(), readings, _WALK_DEGREE)
-        squares += float(np.sum((cubic(np.array(_places())) - readings) ** 2))
+        curve = np.polynomial.Polynomial.fit(_places(), readings, _WALK_DEGREE)
+        squares += float(np.sum((curve(np.array(_places())) - readings) ** 2))
     scatter = math.sqrt(squares / (_WALKS * (_WALK_POINTS - _WALK_DEGREE - 1)))
     return DEVIATIONS * math.sqrt(2.0) * scatter / SPAN_PERCENT
 

@@ -26,8 +26,9 @@ def lines(text: str) -> list[str]:
 
 
 def test_study_alone_names_its_questions(run: Run) -> None:
-    ran = run("study", "--help")
-    assert ran.code == 0
+    ran = run("study")
+    assert (ran.code, ran.err) == (0, "")
+    assert ran.out == run("study", "--help").out
     assert {"tolerance", "sensitivity"} <= {line.split()[0] for line in ran.out.splitlines() if line.startswith("  ")}
 
 

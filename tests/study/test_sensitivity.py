@@ -38,7 +38,7 @@ def test_every_number_that_a_tolerance_spreads_is_varied_but_zeros():
     assert ("Q_bend", "saturation_current") in names
     assert ("P_pitch", "at") not in names  # a position is no part's value
     assert ("D_charge", "series_resistance") not in names  # zero
-    assert strikes(read_circuit_text(DISCHARGE, "")) == 1 + 27 + 2 * 3
+    assert strikes(read_circuit_text(DISCHARGE, "")) == 1 + 39 + 2 * 3
 
 
 def test_progress_counts_every_strike():
@@ -65,12 +65,12 @@ def test_what_has_no_pitch_has_no_slope_and_no_floor_of_it(click):
 
 
 def test_the_floor_is_the_scatter_of_a_slope():
-    """White noise of known size on a cubic: three standard deviations of a difference of two readings."""
+    """White noise of known size on curves of fifth degree: three deviations of a difference of two readings."""
     rng = np.random.default_rng(3)
-    places = np.linspace(-1.0, 1.0, 9)
+    places = np.linspace(-1.0, 1.0, 13)
     floors = []
     for _ in range(400):
-        walks = [coefficients @ np.vander(places, 4).T for coefficients in rng.normal(size=(3, 4))]
+        walks = [coefficients @ np.vander(places, 6).T for coefficients in rng.normal(size=(3, 6))]
         floors.append(_floor("decay", 0.0, [1e-3 * (y + 0.01 * rng.normal()) for walk in walks for y in walk]))
     assert math.sqrt(np.mean(np.square(floors))) == pytest.approx(DEVIATIONS * math.sqrt(2) * 0.01, rel=0.03)
 
