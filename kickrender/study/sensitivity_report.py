@@ -19,6 +19,7 @@ SCHEMA_VERSION = 1
 JSON_NAME = "sensitivity.json"
 CSV_NAME = "sensitivity.csv"
 MOST_BARS = 14
+FEWEST_ROWS = 6  # so that two bars do not fill a picture
 SLOPE_DIGITS = 6
 
 
@@ -112,7 +113,9 @@ def _bars(axes: Any, study: Sensitivity, name: str) -> None:
     axes.set_title(f"{aspect.about}{more}", loc="left")
     axes.set_xlabel(f"{aspect.change_unit} per percent")
     if not told or floor is None:
-        axes.text(0.5, 0.5, "no part moves it above the noise", transform=axes.transAxes, ha="center")
+        nothing = "the sound has none" if study.exact[name] is None else "no part moves it above the noise"
+        axes.text(0.5, 0.5, nothing, transform=axes.transAxes, ha="center")
+        axes.set_xticks([])
         axes.set_yticks([])
         return
     shown = told[:MOST_BARS]
@@ -122,9 +125,9 @@ def _bars(axes: Any, study: Sensitivity, name: str) -> None:
     axes.bar_label(bars, [f"{value:+.3g}" for value in values], padding=2, fontsize=7)
     axes.margins(x=0.15)
     axes.set_yticks(places, [slope.name for slope in shown], fontsize=8)
-    axes.invert_yaxis()
+    axes.set_ylim(max(len(shown), FEWEST_ROWS) - 0.5, -0.5)
     axes.axvline(0.0, color="black", linewidth=0.7)
-    axes.axvspan(-floor, floor, color="grey", alpha=0.3, linewidth=0)
+    axes.axvspan(-floor, floor, color="lightgrey", linewidth=0, zorder=0)
     axes.grid(alpha=0.25, axis="x")
 
 

@@ -152,6 +152,8 @@ def _histogram(axes: Any, study: Tolerance, name: str, limit: Limit | None) -> N
     axes.set_xlabel(unit)
     if not values:
         axes.text(0.5, 0.5, "no build has one", transform=axes.transAxes, ha="center")
+        axes.set_xticks([])
+        axes.set_yticks([])
         return
     axes.hist(values, bins=min(_MOST_BINS, max(5, round(2.0 * math.sqrt(len(values))))), color=pictures.COLOURS[4])
     axes.set_ylabel("builds")
