@@ -22,6 +22,7 @@ from kickrender.study.limits import ABOVE, BELOW, KEPT, NONE, Limit, read_limits
         ("drop=-50..1250cents", -0.5, 12.5, False),
         ("decay=400..600ms", 0.4, 0.6, False),
         ("decay=400ms..0.6s", 0.4, 0.6, False),
+        ("decay=400ms..600", 0.4, 0.6, False),
         ("decay=.4..6e-1s", 0.4, 0.6, False),
         ("loudness=-20..-14LUFS", -20.0, -14.0, False),
         ("loudness=-1dB..1dB", -1.0, 1.0, True),

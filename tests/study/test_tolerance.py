@@ -164,6 +164,7 @@ def test_builds_that_cannot_be_solved_are_told_and_stop_no_other():
     assert facts["yield"]["kept"] == 20 - sum(grows)
     assert set(facts["failures"]) == {str(number) for number, failed in enumerate(grows, 1) if failed}
     assert facts["limits"][0]["none"] == sum(grows)
+    assert tolerance(circuit, spread, count=20).achieved().kept == 20 - sum(grows)  # sounding is all that is asked
 
 
 @pytest.mark.parametrize("count", [0, 1, 10_001])
