@@ -18,6 +18,8 @@ if TYPE_CHECKING:
     from kickrender.lock.verify import Verification
     from kickrender.pack.run import Result
     from kickrender.sound.loaded import LoadedCircuit
+    from kickrender.study.fit import Fit
+    from kickrender.study.parts import PartsStudy
     from kickrender.study.sensitivity import Sensitivity
     from kickrender.study.tolerance import Tolerance
 
@@ -29,6 +31,8 @@ __all__ = [
     "lock_pack",
     "render_pack",
     "shipped",
+    "study_fit",
+    "study_parts",
     "study_sensitivity",
     "study_tolerance",
     "verify_pack",
@@ -142,6 +146,53 @@ def study_sensitivity(
     circuit = read_circuit(name_or_path)
     warm_up()
     return sensitivity(circuit, settings=settings, jobs=jobs)
+
+
+def study_parts(
+    name_or_path: str | Path, settings: Mapping[str, float | str | bool] | None = None, *, worst: bool = False
+) -> PartsStudy:
+    """The parts list, and what a hit asks of each part; see `kickrender.study.parts.list_parts`."""
+    from kickrender.circuit import read_circuit
+    from kickrender.sound.warm_up import warm_up
+    from kickrender.study.parts import list_parts
+
+    circuit = read_circuit(name_or_path)
+    warm_up()
+    return list_parts(circuit, settings, worst=worst)
+
+
+def study_fit(
+    name_or_path: str | Path,
+    goals: Sequence[str],
+    settings: Mapping[str, float | str | bool] | None = None,
+    *,
+    vary: Sequence[str] = (),
+    series: Mapping[str, str] | None = None,
+    count: int = 5,
+    jobs: int = 1,
+) -> Fit:
+    """Part values for wanted goals; see `kickrender.study.fit.fit`.
+
+    Parameters
+    ----------
+    goals : sequence of str
+        "pitch=50Hz", "decay=0.4s", "drop=14st".
+    vary : sequence of str
+        Names of parts; by default those that the goals follow most.
+    series : mapping, optional
+        "resistor" -> "E96"; by default E24 for resistors and E12 for capacitors and inductors.
+    """
+    from kickrender.circuit import read_circuit
+    from kickrender.sound.warm_up import warm_up
+    from kickrender.study.fit import fit
+    from kickrender.study.fit_read import read_goals, read_series_by_kind, read_varied
+
+    circuit = read_circuit(name_or_path)
+    wanted = read_goals(goals, "goals")
+    parts = read_varied(vary, circuit, settings or {}, "vary")
+    by_kind = read_series_by_kind([f"{kind}={name}" for kind, name in (series or {}).items()], "series")
+    warm_up()
+    return fit(circuit, wanted, vary=parts, series=by_kind, settings=settings, count=count, jobs=jobs)
 
 
 def shipped() -> dict[str, dict[str, str]]:

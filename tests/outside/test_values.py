@@ -10,6 +10,7 @@ from pathlib import Path
 
 import pytest
 
+from kickrender.circuit.series import SERIES
 from kickrender.circuit.values import format_value, letter_code, parse_value
 from kickrender.errors import InputError
 
@@ -83,3 +84,9 @@ def test_written_codes_read_back(series: str, unit: str) -> None:
             code = letter_code(value, unit)
             assert parse_value(code, unit) == value
             assert sum(not letter.isdigit() for letter in code) == 1
+
+
+@pytest.mark.parametrize("name", DATA["series"])
+def test_series_are_the_standards(name: str) -> None:
+    """IEC 60063, every value of every series; E192's 9.20 stands where the rounded root would be 9.19."""
+    assert list(SERIES[name]) == DATA["series"][name]

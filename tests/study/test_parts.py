@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import pytest
 
+import kickrender
 from kickrender.circuit import read_circuit, read_circuit_text
 from kickrender.errors import InputError
 from kickrender.study.parts import CAUTION, list_parts
@@ -19,6 +20,10 @@ def test_equal_parts_stand_together() -> None:
     assert lines["Q_dump", "Q_hit"] == ("pnp", "", "small-pnp")
     assert sorted(name for line in found.lines for name in line.parts) == sorted(circuit.parts)
     assert set(found.bears) == set(circuit.parts)
+
+
+def test_the_same_from_a_name() -> None:
+    assert kickrender.study_parts("twin-t").facts == list_parts(read_circuit("twin-t")).facts
 
 
 def test_a_part_that_is_set_is_listed_as_set() -> None:
