@@ -3,8 +3,8 @@
 A pack file says which circuit to strike, along which axes to walk, and how the files are to sound and be called:
 `title`, `about`, `circuit` (a name or path, or a list of them), `[sound]`, `[level]`, `[files]`, `[tags]`, `[license]`,
 and what `read_block` reads. With `[[blocks]]` it holds several designs: each block may have a `circuit`, `axes` and
-`fixed` of its own, which add to or replace what the whole file says, and a `design`, `layers`, `takes` and `hits` of its
-own in place of the file's.
+`fixed` of its own, which add to or replace what the whole file says, and a `design`, `layers`, `takes` and `hits` of
+its own in place of the file's.
 """
 
 from __future__ import annotations
