@@ -47,22 +47,31 @@ def load(name_or_path: str | Path) -> LoadedCircuit:
 
 
 def render_pack(
-    name_or_path: str | Path, out: str | Path, *, jobs: int = 1, progress: Callable[[int], None] | None = None
+    name_or_path: str | Path,
+    out: str | Path,
+    *,
+    jobs: int = 1,
+    progress: Callable[[int], None] | None = None,
+    cluster: str | None = None,
 ) -> Result:
     """Render a pack, by shipped name or path, into the folder `out`; see `kickrender.pack.run.render_plan`.
 
     With more than one job the calling script needs `if __name__ == "__main__":`, as always where processes are started.
+    With the address of a cluster's scheduler the work is done there; see `kickrender.pack.cluster.connect`.
     """
+    from contextlib import nullcontext
     from pathlib import Path
 
+    from kickrender.pack.cluster import connect
     from kickrender.pack.plan import plan_pack
     from kickrender.pack.read import read_pack
     from kickrender.pack.run import render_plan
     from kickrender.sound.warm_up import warm_up
 
-    plan = plan_pack(read_pack(name_or_path))
-    warm_up()  # before workers start: each of them would compile for itself
-    return render_plan(plan, Path(out), jobs, progress or (lambda hits: None))
+    pack = read_pack(name_or_path)
+    with nullcontext() if cluster is None else connect(cluster) as workers:
+        warm_up()  # before workers start: each of them would compile for itself
+        return render_plan(plan_pack(pack), Path(out), jobs, progress or (lambda hits: None), workers)
 
 
 def lock_pack(name_or_path: str | Path, lock: str | Path, *, audio: bool = False, jobs: int = 1) -> Lock:

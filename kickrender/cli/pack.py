@@ -14,7 +14,8 @@ from kickrender.cli.solver import ready_solver
 from kickrender.errors import Fault, InputError, KickrenderError
 
 if TYPE_CHECKING:
-    from kickrender.pack.records import Plan
+    from kickrender.pack.cluster import Cluster
+    from kickrender.pack.records import Pack, Plan
 
 MOST_NAMES = 20  # told by a dry run
 
@@ -24,10 +25,13 @@ MOST_NAMES = 20  # told by a dry run
 @click.option("--out", type=click.Path(path_type=Path), help="The folder to fill; made when missing.")
 @click.option("--jobs", metavar="N", help="Worker processes.  [default: one per core]")
 @click.option(
+    "--cluster", metavar="ADDRESS", help="Let the workers of a dask.distributed scheduler render, in place of --jobs."
+)
+@click.option(
     "--only", type=click.Path(path_type=Path), metavar="FILE", help="Render the hits named in this list alone."
 )
 @click.option("--dry-run", is_flag=True, help="Check everything; tell the number of hits, time, room and first names.")
-def pack(pack: str, out: Path | None, jobs: str | None, only: Path | None, dry_run: bool) -> None:
+def pack(pack: str, out: Path | None, jobs: str | None, cluster: str | None, only: Path | None, dry_run: bool) -> None:
     """Render every hit of PACK: one sound and one sidecar each; pack.json, pack.csv and pack.png over all; and a
     listening sheet, index.html, to hear, sort and choose hits in a browser.
 
@@ -40,14 +44,32 @@ def pack(pack: str, out: Path | None, jobs: str | None, only: Path | None, dry_r
       kickrender pack my-pack.toml --out library --jobs 4
       kickrender pack my-pack.toml --only favourites.txt --out best
       kickrender pack my-pack.toml --dry-run
+      kickrender pack my-pack.toml --out library --cluster tcp://192.168.0.10:8786
     """
     if out is None and not dry_run:
         raise InputError(Fault("kickrender pack", "--out is missing", "--out FOLDER, or --dry-run"))
+    if jobs is not None and cluster is not None:
+        raise InputError(Fault("kickrender pack", "--jobs and --cluster", "one of them"))
     workers = cores() if jobs is None else read_jobs(jobs)
-    from kickrender.pack.plan import plan_pack
     from kickrender.pack.read import read_pack
 
     read = read_pack(pack)
+    if cluster is None:
+        _render(read, out, workers, None, only, dry_run)
+        return
+    from kickrender.pack.cluster import connect
+
+    with connect(cluster) as found:
+        if found.uncompiled and not dry_run:
+            note(f"{found.uncompiled} of {found.count} workers compile the solver first (once, up to a minute) ...")
+        _render(read, out, found.count, found, only, dry_run)
+
+
+def _render(
+    read: Pack, out: Path | None, workers: int, cluster: Cluster | None, only: Path | None, dry_run: bool
+) -> None:
+    from kickrender.pack.plan import plan_pack
+
     if any(block.asks_for_goals for block in read.blocks):
         ready_solver()
     plan = plan_pack(read)
@@ -64,7 +86,7 @@ def pack(pack: str, out: Path | None, jobs: str | None, only: Path | None, dry_r
     with click.progressbar(
         length=len(plan.hits), label=plan.title, file=sys.stderr, hidden=not sys.stderr.isatty()
     ) as bar:
-        result = render_plan(plan, out, workers, bar.update)
+        result = render_plan(plan, out, workers, bar.update, cluster)
     if result.kept:
         note(f"{len(result.kept)} hits were there already")
     for file in result.stale:

@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-import functools
-import hashlib
 import os
 import platform
 from collections.abc import Mapping
@@ -18,11 +16,10 @@ from kickrender.engine import ENGINE_VERSION
 from kickrender.lock.records import Lock, LockedCircuit
 from kickrender.lock.text import fields_of, number_text
 from kickrender.pack.records import Hit, Plan
+from kickrender.sound.code import code_digest
 from kickrender.sound.recipe import beyond_settings
 
 LIBRARIES = ("llvmlite", "numba", "numpy", "pyloudnorm", "scipy", "soundfile")  # that samples or measurements pass
-CODE_FOLDERS = ("circuit", "engine", "sound")
-CODE_DIGITS = 16
 
 
 def lock_of(plan: Plan, pack: str) -> Lock:
@@ -60,21 +57,6 @@ def settings_of(plan: Plan, hit: Hit) -> dict[str, str]:
 def libraries() -> dict[str, str]:
     """The version of every library that a sound passes through, and Python's."""
     return {name: metadata.version(name) for name in LIBRARIES} | {"python": platform.python_version()}
-
-
-@functools.cache
-def code_digest() -> str:
-    """First digits of the SHA-256 over the source files between circuit and file: names and contents, by name.
-
-    It says that code was touched, not that bytes moved; while it stays, a locked gain need not be measured again.
-    """
-    package = Path(__file__).resolve().parents[1]
-    digest = hashlib.sha256()
-    for folder in CODE_FOLDERS:
-        for path in sorted((package / folder).rglob("*.py")):
-            digest.update(f"{path.relative_to(package).as_posix()}\0".encode())
-            digest.update(path.read_bytes().replace(b"\r\n", b"\n") + b"\0")
-    return digest.hexdigest()[:CODE_DIGITS]
 
 
 def entries(circuit: Circuit) -> dict[tuple[str, str], dict[str, str]]:

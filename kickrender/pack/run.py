@@ -10,11 +10,13 @@ from pathlib import Path
 
 from kickrender.errors import MeasurementError, WriteError
 from kickrender.pack.batches import MOST_HITS, batches_of, groups_of
+from kickrender.pack.cluster import Cluster
 from kickrender.pack.estimate import check_room
 from kickrender.pack.license import check_license, write_license
 from kickrender.pack.manifest import remove_manifest, stale_files, write_manifest
 from kickrender.pack.records import Hit, Plan
 from kickrender.pack.render import Outcome, gain_of, measure_batch, render_batch
+from kickrender.pack.sending import receive, send_batch
 from kickrender.pack.sheets import remove_sheets, sheet_of, write_sheets
 from kickrender.pack.sidecar import is_done
 from kickrender.pack.workers import Progress, run_batches
@@ -45,7 +47,13 @@ def missing_hits(plan: Plan, folder: Path) -> list[Hit]:
     return [hit for group in groups_of(plan.hits) if any(h.name not in done for h in group) for hit in group]
 
 
-def render_plan(plan: Plan, folder: Path, jobs: int = 1, progress: Progress = lambda hits: None) -> Result:
+def render_plan(
+    plan: Plan,
+    folder: Path,
+    jobs: int = 1,
+    progress: Progress = lambda hits: None,
+    cluster: Cluster | None = None,
+) -> Result:
     """Fill `folder` with the pack: a sound and a sidecar for each hit, then manifest and sheets over all.
 
     Parameters
@@ -56,6 +64,8 @@ def render_plan(plan: Plan, folder: Path, jobs: int = 1, progress: Progress = la
         Worker processes. No byte depends on it.
     progress : function (hits) -> None
         Told how many more hits are done; kept ones count at once.
+    cluster : Cluster, optional
+        Whose workers do the work in place of processes of this machine; see `kickrender.pack.cluster.connect`.
 
     Returns
     -------
@@ -68,7 +78,7 @@ def render_plan(plan: Plan, folder: Path, jobs: int = 1, progress: Progress = la
     WriteError
         If the folder cannot be written; what was written is whole.
     WorkerError
-        If a worker process died.
+        If a worker process died, or no worker of the cluster is left.
     """
     missing = missing_hits(plan, folder)
     check_room(plan, folder, missing)
@@ -82,7 +92,7 @@ def render_plan(plan: Plan, folder: Path, jobs: int = 1, progress: Progress = la
     if missing:
         remove_manifest(folder)  # a manifest stands for a finished pack, and so do the sheets
         remove_sheets(folder)
-        for outcome in _render(plan, folder, missing, jobs, progress):
+        for outcome in _render(plan, folder, missing, jobs, progress, cluster):
             if outcome.fatal:
                 raise WriteError(outcome.failure)
             if outcome.failure:
@@ -95,11 +105,17 @@ def render_plan(plan: Plan, folder: Path, jobs: int = 1, progress: Progress = la
     return Result(rendered, tuple(hit.name for hit in plan.hits if hit.name in kept), in_order, stale)
 
 
-def _render(plan: Plan, folder: Path, missing: Sequence[Hit], jobs: int, progress: Progress) -> Iterator[Outcome]:
-    jobs = max(1, min(jobs, len(missing) // FEWEST_PER_WORKER))
+def _render(
+    plan: Plan, folder: Path, missing: Sequence[Hit], jobs: int, progress: Progress, cluster: Cluster | None
+) -> Iterator[Outcome]:
+    jobs = cluster.count if cluster else max(1, min(jobs, len(missing) // FEWEST_PER_WORKER))
     groups = groups_of(missing)
-    gains = measured_gains(plan, folder, _to_measure(plan, groups), jobs) if plan.together else {}
-    yield from run_batches(batches_of(plan, folder, groups, jobs, gains), render_batch, jobs, progress)
+    gains = measured_gains(plan, folder, _to_measure(plan, groups), jobs, cluster) if plan.together else {}
+    batches = batches_of(plan, folder, groups, jobs, gains)
+    if cluster is None:
+        yield from run_batches(batches, render_batch, jobs, progress)
+    else:
+        yield from (receive(sent, folder) for sent in cluster.run(batches, send_batch, progress))
 
 
 def _to_measure(plan: Plan, groups: Sequence[tuple[Hit, ...]]) -> list[tuple[Hit, ...]]:
@@ -110,13 +126,19 @@ def _to_measure(plan: Plan, groups: Sequence[tuple[Hit, ...]]) -> list[tuple[Hit
     return [group for group in whole if len(group) > MOST_HITS or group[0].group in left_out]
 
 
-def measured_gains(plan: Plan, folder: Path, groups: Sequence[Sequence[Hit]], jobs: int) -> dict[int, Gain]:
+def measured_gains(
+    plan: Plan, folder: Path, groups: Sequence[Sequence[Hit]], jobs: int, cluster: Cluster | None = None
+) -> dict[int, Gain]:
     """The gain of each of these groups, from a run that only measures.
 
     A group that cannot be measured has none here; its hits fail, with the reason, when they are rendered.
     """
     alone = [(hit,) for group in groups for hit in group]
-    outcomes = run_batches(batches_of(plan, folder, alone, jobs, {}), measure_batch, jobs, lambda hits: None)
+    batches = batches_of(plan, folder, alone, jobs, {})
+    if cluster is None:
+        outcomes = run_batches(batches, measure_batch, jobs, lambda hits: None)
+    else:
+        outcomes = cluster.run(batches, measure_batch, lambda hits: None)
     measured = {outcome.name: outcome.measurements for outcome in outcomes if outcome.measurements is not None}
     gains: dict[int, Gain] = {}
     for group in groups:

@@ -7,10 +7,10 @@ from dataclasses import asdict
 from pathlib import Path
 from typing import Any
 
-from kickrender.errors import WriteError
 from kickrender.pack.batches import Batch
 from kickrender.pack.records import Hit, Plan, Tags
 from kickrender.pack.tags import chunks_of, texts_of
+from kickrender.sound.files import make_folder
 from kickrender.sound.render import Sound, write_pair
 from kickrender.sound.sidecar import read_sidecar
 from kickrender.sound.sound_file import pcm_digest_of_file
@@ -35,10 +35,7 @@ def write_hit(batch: Batch, hit: Hit, sound: Sound) -> None:
         If the folder cannot be written to or is full, or somebody else's .json is in the way.
     """
     path = sound_path(batch.folder, hit.name, batch.options.ending)
-    try:
-        path.parent.mkdir(parents=True, exist_ok=True)
-    except OSError as error:
-        raise WriteError(f"{path.parent}: cannot be made: {error.strerror}") from None
+    make_folder(path.parent)
     texts, chunks = texts_of(batch.tags, batch.title, hit), chunks_of(batch.tags, batch.title, hit, sound)
     write_pair(path, sound, sidecar_of(batch, hit, sound), texts, chunks)
 

@@ -40,6 +40,14 @@ def write_whole(path: Path, *pieces: bytes) -> None:
             beside.unlink()
 
 
+def make_folder(folder: Path) -> None:
+    """Make a folder and those above it where they are missing; raises WriteError."""
+    try:
+        folder.mkdir(parents=True, exist_ok=True)
+    except OSError as error:
+        raise WriteError(f"{folder}: cannot be made: {error.strerror}") from None
+
+
 def sweep_unfinished(folder: Path) -> None:
     """Take away what a run that was killed left beside its files, in the folder and below it.
 
