@@ -57,8 +57,9 @@ class Cluster:
                 if not waiting:
                     return
                 for future in self._finished(waiting):
-                    waiting.remove(future)
                     outcomes = self._outcomes(future)
+                    waiting.remove(future)
+                    future.release()  # its worker need not keep them any longer
                     progress(len(outcomes))
                     yield from outcomes
         finally:

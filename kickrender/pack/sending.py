@@ -11,7 +11,7 @@ import socket
 import tempfile
 import threading
 from collections.abc import Iterator, Mapping
-from dataclasses import dataclass, replace
+from dataclasses import asdict, dataclass, replace
 from pathlib import Path
 
 import kickrender
@@ -31,19 +31,24 @@ _one_at_a_time = threading.Lock()
 
 @dataclass(frozen=True)
 class Version:
-    """All that decides what a hit's files are: kickrender's version, the engine's, and a digest of their code."""
+    """All that decides what a hit's files are: the versions of kickrender, its engine and the library that packs FLAC,
+    and a digest of the code."""
 
     kickrender: str
     engine: str
+    libsndfile: str
     code: str
 
     def __str__(self) -> str:
-        return f"kickrender {self.kickrender}, engine {self.engine}, code {self.code}"
+        return ", ".join(f"{name} {value}" for name, value in asdict(self).items())
 
 
 def version() -> Version:
     """The version of this process."""
-    return Version(kickrender.__version__, ENGINE_VERSION, code_digest((*CODE_FOLDERS, "pack")))
+    import soundfile
+
+    library = soundfile.__libsndfile_version__
+    return Version(kickrender.__version__, ENGINE_VERSION, library, code_digest((*CODE_FOLDERS, "pack")))
 
 
 def state() -> tuple[Version, bool]:
