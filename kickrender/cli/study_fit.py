@@ -14,7 +14,8 @@ from kickrender.cli.solver import ready_solver
 from kickrender.cli.tables import print_table
 
 if TYPE_CHECKING:
-    from kickrender.study.fit import Combination, Fit
+    from kickrender.study.fit import Fit
+    from kickrender.study.fit_bench import Combination
 
 
 @click.command()
@@ -94,7 +95,8 @@ _USUAL_STRIKES = 250
 
 def _print(found: Fit) -> None:
     from kickrender.sound.goals import GOALS
-    from kickrender.study.fit import miss_unit
+    from kickrender.study.aspects import ASPECTS
+    from kickrender.study.fit_bench import miss_unit
     from kickrender.study.fit_report import codes
 
     wanted = ", ".join(f"{goal.kind} {goal.shown}" for goal in found.goals)
@@ -103,13 +105,16 @@ def _print(found: Fit) -> None:
 
     def row(title: str, each: Combination) -> tuple[str, ...]:
         told = [(f"{each.measured[kind]:.5g}", f"{each.misses[kind]:+.3g}") for kind in kinds]
-        return title, *codes(found, each.values).values(), *(cell for pair in told for cell in pair), f"{each.off:.2g}"
+        besides = ["-" if value is None else f"{round(value, 4):.4g}" for value in each.besides.values()]
+        cells = [cell for pair in told for cell in pair]
+        return title, *codes(found, each.values).values(), *cells, f"{each.off:.2g}", *besides
 
     heads = [(f"{kind}, {GOALS[kind].unit}", miss_unit(kind)) for kind in kinds]
     before = [] if found.before is None else [row("before", found.before)]
-    series = ("series", *found.series.values(), *("" for _ in kinds for _ in (0, 1)), "")
+    others = [f"{name}, {ASPECTS[name].unit}" for name in found.free.besides]
+    series = ("series", *found.series.values(), *("" for _ in range(2 * len(kinds) + 1 + len(others))))
     print_table(
         "Combinations, and what each misses by",
-        ("", *found.series, *(cell for pair in heads for cell in pair), "off"),
+        ("", *found.series, *(cell for pair in heads for cell in pair), "off", *others),
         [series, *before, row("free", found.free), *(row(str(k), each) for k, each in enumerate(found.best, 1))],
     )

@@ -21,6 +21,7 @@ ROUNDS = 8
 LONGEST_STEP = 1.1  # three times as large or small
 SHORTER = (1.0, 0.5, 0.2, 0.05)  # shares of a step, tried side by side
 SLOPE_STEP = 0.02
+BEND_STEP = 0.06  # wide enough that bends stand out of what measuring scatters
 DEAF = 0.5  # tolerances by a factor e: a goal that moves less does not follow the parts
 _SMALLEST_SHARE = 1e-3  # of the largest singular value: what lies below is noise
 

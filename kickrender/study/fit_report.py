@@ -14,8 +14,10 @@ from kickrender.errors import WriteError
 from kickrender.sound.files import write_whole
 from kickrender.sound.goals import GOALS
 from kickrender.sound.sidecar import json_bytes
+from kickrender.study.aspects import ASPECTS
 from kickrender.study.files import open_folder, write_table
-from kickrender.study.fit import Combination, Fit, miss_unit
+from kickrender.study.fit import Fit
+from kickrender.study.fit_bench import Combination, miss_unit
 
 SCHEMA = "kickrender fit"
 SCHEMA_VERSION = 1
@@ -57,6 +59,7 @@ def _combination(found: Fit, each: Combination) -> dict[str, Any]:
         "measured": dict(each.measured),
         "misses": {kind: round(value, 4) for kind, value in each.misses.items()},
         "off": round(each.off, 4),
+        "besides": dict(each.besides),
     }
 
 
@@ -91,6 +94,7 @@ def write_fit(found: Fit, folder: Path) -> list[str]:
             **{f"{kind}_{_word(GOALS[kind].unit)}": value for kind, value in each.measured.items()},
             **{f"{kind}_missed_{_word(miss_unit(kind))}": value for kind, value in each.misses.items()},
             "off": each.off,
+            **{f"{name}_{_word(ASPECTS[name].unit)}": value for name, value in each.besides.items()},
         }
         for rank, each in enumerate(found.best, 1)
     ]

@@ -24,7 +24,7 @@ def test_combinations_are_printed_and_the_best_renders(run: Run) -> None:
     assert (ran.code, ran.err) == (0, "fits: bell-fit.toml, fit.csv, fit.json\n")
     lines = [" ".join(line.split()) for line in ran.out.splitlines()]
     assert lines[0].startswith("Bare bridged-T: pitch 272 Hz, decay 0.11 s; ")
-    assert "R_bridge R_leg pitch, Hz cents decay, s % off" in lines
+    assert "R_bridge R_leg pitch, Hz cents decay, s % off drop, semitones loudness, LUFS" in lines
     assert "series E12 E12" in lines
     assert [line.split()[0] for line in lines[5:]] == ["before", "free", "1", "2", "3"]
     assert lines[5].startswith("before 1M0 1K0 335.")
