@@ -8,12 +8,16 @@ from typing import TYPE_CHECKING, Any
 
 import pytest
 
+from kickrender.pack.plan import plan_pack
+from kickrender.pack.read import read_pack_text
+from kickrender.pack.run import render_plan
 from kickrender.pack.sheet import sheet_bytes
 from kickrender.pack.thumbnails import scale_of, thumbnails_of
 from tests.browser import browser, complaints, requests
+from tests.pack.folders import contents
 from tests.pack.made_up import make_pack
 from tests.pack.sheet_page import TITLE
-from tests.pack.texts import VOICE
+from tests.pack.texts import MANY, VOICE
 from tests.page_checks import resize
 
 if TYPE_CHECKING:
@@ -25,6 +29,22 @@ def folder(tmp_path: Path) -> Path:
     (tmp_path / "voice.toml").write_text(VOICE)
     (tmp_path / "other.toml").write_text(VOICE.replace('"18n"', '"22n"'))
     return tmp_path
+
+
+@pytest.fixture
+def many(folder: Path) -> Path:
+    """The file of a pack of 300 hits."""
+    (folder / "many.toml").write_text(MANY)
+    return folder / "many.toml"
+
+
+@pytest.fixture(scope="session")
+def many_rendered(tmp_path_factory: pytest.TempPathFactory) -> dict[str, bytes]:
+    """What lies in that pack's folder when nothing went wrong: path -> contents."""
+    folder = tmp_path_factory.mktemp("many")
+    (folder / "voice.toml").write_text(VOICE)
+    render_plan(plan_pack(read_pack_text(MANY, "many.toml", folder)), folder / "out")
+    return contents(folder / "out")
 
 
 @pytest.fixture(scope="module")

@@ -12,7 +12,7 @@ from kickrender.pack.plan import plan_pack
 from kickrender.pack.read import read_pack_text
 from kickrender.pack.records import Plan
 from kickrender.pack.run import render_plan
-from tests.pack.test_run import contents, validate
+from tests.pack.folders import contents, validate
 from tests.pack.texts import PACK
 
 TAGS = '\n[tags]\nartist = "Harbour"\ngenre = "Foley"\ndate = 2026-03-01\n'

@@ -9,7 +9,6 @@ import warnings
 import wave
 from collections.abc import Callable
 from dataclasses import replace
-from importlib import resources
 from pathlib import Path
 from typing import Any
 
@@ -24,30 +23,16 @@ from kickrender.pack.plan import plan_pack
 from kickrender.pack.read import read_pack_text
 from kickrender.pack.records import Plan
 from kickrender.pack.run import Result, render_plan
+from tests.pack.folders import contents, hit_files, validate
 from tests.pack.texts import PACK
-
-SCHEMAS = resources.files("kickrender.pack") / "schemas"
 
 
 def plan_of(text: str, folder: Path) -> Plan:
     return plan_pack(read_pack_text(text, "p.toml", folder))
 
 
-def contents(folder: Path) -> dict[str, bytes]:
-    return {path.relative_to(folder).as_posix(): path.read_bytes() for path in folder.rglob("*") if path.is_file()}
-
-
-def hit_files(folder: Path) -> dict[str, bytes]:
-    """The files of the hits, without those over the whole pack."""
-    return {name: data for name, data in contents(folder).items() if "/" in name}
-
-
 def sidecars(folder: Path) -> list[dict[str, Any]]:
     return [json.loads(path.read_bytes()) for path in sorted(folder.rglob("*.json")) if path.name != "pack.json"]
-
-
-def validate(value: object, schema: str) -> None:
-    jsonschema.Draft202012Validator(json.loads((SCHEMAS / schema).read_text())).validate(value)
 
 
 @pytest.fixture(scope="session")

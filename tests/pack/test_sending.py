@@ -13,7 +13,7 @@ from kickrender.pack.read import read_pack_text
 from kickrender.pack.render import Outcome
 from kickrender.pack.run import render_plan
 from kickrender.pack.sending import Sent, receive, send_batch
-from tests.pack.test_run import contents, hit_files
+from tests.pack.folders import contents, hit_files
 from tests.pack.texts import PACK
 
 

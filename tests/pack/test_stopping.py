@@ -2,6 +2,7 @@
 
 import json
 import os
+import random
 import resource
 import signal
 import subprocess
@@ -19,15 +20,7 @@ from kickrender.pack.read import read_pack
 from kickrender.pack.render import Outcome, Stop
 from kickrender.pack.workers import run_batches
 from kickrender.sound.sound_file import pcm_digest_of_file
-from tests.pack.texts import PACK
-
-MANY = PACK.replace("[0.1, 0.5]", "{ from = 0, to = 1, steps = 100 }").replace("{tone}", "{tone:.4f}")
-
-
-@pytest.fixture
-def many(folder: Path) -> Path:
-    (folder / "many.toml").write_text(MANY)
-    return folder / "many.toml"
+from tests.pack.folders import contents
 
 
 def start(pack: Path, out: Path, *options: str) -> subprocess.Popen[str]:
@@ -35,8 +28,8 @@ def start(pack: Path, out: Path, *options: str) -> subprocess.Popen[str]:
     return subprocess.Popen(command, stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True, start_new_session=True)
 
 
-def wait_for_files(out: Path, run: subprocess.Popen[str]) -> None:
-    while run.poll() is None and sum(1 for _ in out.rglob("*.wav")) < 5:
+def wait_for_files(out: Path, run: subprocess.Popen[str], count: int = 5) -> None:
+    while run.poll() is None and sum(1 for _ in out.rglob("*.wav")) < count:
         time.sleep(0.005)
 
 
@@ -77,18 +70,27 @@ def test_ctrl_c_leaves_whole_files_and_a_rerun_finishes(jobs: str, many: Path) -
 
 @pytest.mark.slow
 @pytest.mark.parametrize("jobs", ["1", "2"])
-def test_after_a_kill_a_rerun_finishes_and_no_worker_stays(jobs: str, many: Path) -> None:
+def test_after_kills_at_random_points_a_rerun_gives_the_same_pack(
+    jobs: str, many: Path, many_rendered: dict[str, bytes]
+) -> None:
+    """Killed early, late, and when every hit is there and the manifest or the sheets are being written."""
     out = many.parent / "out"
-    run = start(many, out, "--jobs", jobs)
-    wait_for_files(out, run)
-    run.kill()
-    try:
-        run.communicate(timeout=20)  # ends when the last process that holds the pipe has ended
-    except subprocess.TimeoutExpired:
-        os.killpg(run.pid, signal.SIGKILL)
-        run.communicate()
-        pytest.fail("a worker still runs after its parent was killed")
+    points = [random.randrange(1, 100), random.randrange(130, 250), 300]
+    for point in points:
+        run = start(many, out, "--jobs", jobs)
+        wait_for_files(out, run, point)
+        time.sleep(random.uniform(0, 0.01))  # anywhere between two files, or within one
+        run.kill()
+        try:
+            run.communicate(timeout=20)  # ends when the last process that holds the pipe has ended
+        except subprocess.TimeoutExpired:
+            os.killpg(run.pid, signal.SIGKILL)
+            run.communicate()
+            pytest.fail("a worker still runs after its parent was killed")
+        assert point == 300 or run.returncode == -signal.SIGKILL, points
+        assert_whole(out)
     assert_a_rerun_finishes(many, out)
+    assert contents(out) == many_rendered, points
 
 
 @pytest.mark.parametrize(("room", "file"), [(500, "1V.wav"), (3000, "1V.json")])

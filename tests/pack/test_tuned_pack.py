@@ -14,7 +14,7 @@ from kickrender.pack.plan import plan_pack
 from kickrender.pack.read import read_pack_text
 from kickrender.pack.records import Plan
 from kickrender.pack.run import render_plan
-from tests.pack.test_run import contents, hit_files, validate
+from tests.pack.folders import contents, hit_files, validate
 
 # A series resonance, f = 1/(2 pi sqrt(L C)), struck by a level that does not move its pitch.
 BELL = """

@@ -40,3 +40,5 @@ R1 = "4k7"
 [files]
 name = "{tone}/{accent}"
 """
+
+MANY = PACK.replace("[0.1, 0.5]", "{ from = 0, to = 1, steps = 100 }").replace("{tone}", "{tone:.4f}")
