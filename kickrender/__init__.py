@@ -53,6 +53,7 @@ def render_pack(
     jobs: int = 1,
     progress: Callable[[int], None] | None = None,
     cluster: str | None = None,
+    drop_duplicates: bool = False,
 ) -> Result:
     """Render a pack, by shipped name or path, into the folder `out`; see `kickrender.pack.run.render_plan`.
 
@@ -71,7 +72,8 @@ def render_pack(
     pack = read_pack(name_or_path)
     with nullcontext() if cluster is None else connect(cluster) as workers:
         warm_up()  # before workers start: each of them would compile for itself
-        return render_plan(plan_pack(pack), Path(out), jobs, progress or (lambda hits: None), workers)
+        progress = progress or (lambda hits: None)
+        return render_plan(plan_pack(pack), Path(out), jobs, progress, workers, drop_duplicates)
 
 
 def lock_pack(name_or_path: str | Path, lock: str | Path, *, audio: bool = False, jobs: int = 1) -> Lock:

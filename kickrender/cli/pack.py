@@ -16,8 +16,9 @@ from kickrender.errors import Fault, InputError, KickrenderError
 if TYPE_CHECKING:
     from kickrender.pack.cluster import Cluster
     from kickrender.pack.records import Pack, Plan
+    from kickrender.pack.run import Result
 
-MOST_NAMES = 20  # told by a dry run
+MOST_NAMES = 20  # told by a dry run, and of near-duplicates
 
 
 @click.command()
@@ -30,8 +31,17 @@ MOST_NAMES = 20  # told by a dry run
 @click.option(
     "--only", type=click.Path(path_type=Path), metavar="FILE", help="Render the hits named in this list alone."
 )
+@click.option("--drop-duplicates", is_flag=True, help="Leave out hits that can hardly be told from an earlier one.")
 @click.option("--dry-run", is_flag=True, help="Check everything; tell the number of hits, time, room and first names.")
-def pack(pack: str, out: Path | None, jobs: str | None, cluster: str | None, only: Path | None, dry_run: bool) -> None:
+def pack(
+    pack: str,
+    out: Path | None,
+    jobs: str | None,
+    cluster: str | None,
+    only: Path | None,
+    drop_duplicates: bool,
+    dry_run: bool,
+) -> None:
     """Render every hit of PACK: one sound and one sidecar each; pack.json, pack.csv and pack.png over all; and a
     listening sheet, index.html, to hear, sort and choose hits in a browser.
 
@@ -43,6 +53,7 @@ def pack(pack: str, out: Path | None, jobs: str | None, cluster: str | None, onl
       kickrender pack night-ferry --out night-ferry
       kickrender pack my-pack.toml --out library --jobs 4
       kickrender pack my-pack.toml --only favourites.txt --out best
+      kickrender pack my-pack.toml --drop-duplicates --out library
       kickrender pack my-pack.toml --dry-run
       kickrender pack my-pack.toml --out library --cluster tcp://192.168.0.10:8786
     """
@@ -55,18 +66,24 @@ def pack(pack: str, out: Path | None, jobs: str | None, cluster: str | None, onl
 
     read = read_pack(pack)
     if cluster is None:
-        _render(read, out, workers, None, only, dry_run)
+        _render(read, out, workers, None, only, drop_duplicates, dry_run)
         return
     from kickrender.pack.cluster import connect
 
     with connect(cluster) as found:
         if found.uncompiled and not dry_run:
             note(f"{found.uncompiled} of {found.count} workers compile the solver first (once, up to a minute) ...")
-        _render(read, out, found.count, found, only, dry_run)
+        _render(read, out, found.count, found, only, drop_duplicates, dry_run)
 
 
 def _render(
-    read: Pack, out: Path | None, workers: int, cluster: Cluster | None, only: Path | None, dry_run: bool
+    read: Pack,
+    out: Path | None,
+    workers: int,
+    cluster: Cluster | None,
+    only: Path | None,
+    drop_duplicates: bool,
+    dry_run: bool,
 ) -> None:
     from kickrender.pack.plan import plan_pack
 
@@ -86,14 +103,28 @@ def _render(
     with click.progressbar(
         length=len(plan.hits), label=plan.title, file=sys.stderr, hidden=not sys.stderr.isatty()
     ) as bar:
-        result = render_plan(plan, out, workers, bar.update, cluster)
+        result = render_plan(plan, out, workers, bar.update, cluster, drop_duplicates)
     if result.kept:
         note(f"{len(result.kept)} hits were there already")
     for file in result.stale:
         note(f"note: {file} is of an earlier run and no hit of this pack any more")
-    click.echo(f"{out}: {len(result.rendered) + len(result.kept)} hits, {len(result.rendered)} of them rendered now")
+    _tell_duplicates(result)
+    summary = f"{out}: {len(result.rendered) + len(result.kept)} hits, {len(result.rendered)} of them rendered now"
+    if result.duplicates:
+        summary += f", {len(result.duplicates)} near duplicates{' left out' if drop_duplicates else ''}"
+    click.echo(summary)
     if result.failed:
         raise HitsFailed("\n".join(f"{name}: {reason}" for name, reason in result.failed.items()))
+
+
+def _tell_duplicates(result: Result) -> None:
+    told = "left out: " if result.left_out else ""
+    for duplicate in result.duplicates[:MOST_NAMES]:
+        note(f"note: {told}{duplicate}")
+    if len(result.duplicates) > MOST_NAMES:
+        note(f"note: and {len(result.duplicates) - MOST_NAMES} more, all of them in pack.json")
+    if result.duplicates and not result.left_out:
+        note("note: --drop-duplicates leaves near duplicates out")
 
 
 def _foretell(plan: Plan, workers: int) -> None:

@@ -5,7 +5,7 @@ from __future__ import annotations
 import csv
 import hashlib
 import io
-from collections.abc import Mapping
+from collections.abc import Collection, Mapping
 from dataclasses import asdict
 from pathlib import Path
 from typing import Any
@@ -23,8 +23,19 @@ SCHEMA_VERSION = 1
 JSON_NAME, CSV_NAME = "pack.json", "pack.csv"
 
 
-def write_manifest(plan: Plan, folder: Path, failed: Mapping[str, str]) -> None:
+def write_manifest(
+    plan: Plan, folder: Path, failed: Mapping[str, str], duplicates: Mapping[str, Any], left_out: Collection[str]
+) -> None:
     """Write pack.json and pack.csv; hits without a file stand in pack.json with the reason.
+
+    Parameters
+    ----------
+    failed : mapping
+        Hit -> why it could not be rendered.
+    duplicates : mapping
+        What is said of near-duplicates.
+    left_out : collection of str
+        Near-duplicates that are not to be listed.
 
     Raises
     ------
@@ -32,7 +43,7 @@ def write_manifest(plan: Plan, folder: Path, failed: Mapping[str, str]) -> None:
         If a file cannot be written, or a sidecar has gone meanwhile.
     """
     check_ours(folder / JSON_NAME)
-    hits = [_entry(plan, folder, hit.name) for hit in plan.hits if hit.name not in failed]
+    hits = [_entry(plan, folder, hit.name) for hit in plan.hits if hit.name not in {*failed, *left_out}]
     manifest = {
         "schema": SCHEMA,
         "schema_version": SCHEMA_VERSION,
@@ -45,6 +56,7 @@ def write_manifest(plan: Plan, folder: Path, failed: Mapping[str, str]) -> None:
         **license_facts(plan),
         "hits": hits,
         "failed": [{"name": name, "reason": reason} for name, reason in failed.items()],
+        "duplicates": dict(duplicates),
     }
     write_whole(folder / CSV_NAME, _csv(hits, plan.tags.license))
     write_whole(folder / JSON_NAME, json_bytes(manifest))

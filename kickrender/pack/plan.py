@@ -83,6 +83,7 @@ def plan_pack(pack: Pack) -> Plan:
         together=together,
         tags=pack.tags,
         license_text=pack.license_text,
+        duplicates_below_db=pack.duplicates_below_db,
         hits=tuple(_hits(pack, circuits, drafts, names)),
     )
 

@@ -2,13 +2,14 @@
 
 A pack file says which circuit to strike, along which axes to walk, and how the files are to sound and be called:
 `title`, `about`, `circuit` (a name or path, or a list of them), `[sound]`, `[level]`, `[files]`, `[tags]`, `[license]`,
-and what `read_block` reads. With `[[blocks]]` it holds several designs: each block may have a `circuit`, `axes` and
-`fixed` of its own, which add to or replace what the whole file says, and a `design`, `layers`, `takes` and `hits` of
-its own in place of the file's.
+`[duplicates]`, and what `read_block` reads. With `[[blocks]]` it holds several designs: each block may have a
+`circuit`, `axes` and `fixed` of its own, which add to or replace what the whole file says, and a `design`, `layers`,
+`takes` and `hits` of its own in place of the file's.
 """
 
 from __future__ import annotations
 
+import contextlib
 from collections.abc import Mapping
 from pathlib import Path
 from typing import Any
@@ -21,13 +22,15 @@ from kickrender.errors import InputError, nearest_name
 from kickrender.pack.license import read_license
 from kickrender.pack.read_block import BLOCK_KEYS, BlockReading
 from kickrender.pack.reading import Reading, Where
-from kickrender.pack.records import CIRCUIT_AXIS, Block, Pack
+from kickrender.pack.records import CIRCUIT_AXIS, DUPLICATES_BELOW_DB, Block, Pack
 from kickrender.pack.tags import read_tags
 from kickrender.sound.level import Level, read_level
 from kickrender.sound.options import SoundOptions, read_options
 
-KEYS = ("title", "about", "sound", "level", "files", "tags", "license", *BLOCK_KEYS, "blocks")
+KEYS = ("title", "about", "sound", "level", "files", "tags", "license", "duplicates", *BLOCK_KEYS, "blocks")
 FILE_KEYS = ("name",)
+DUPLICATES_KEYS = ("below",)
+DUPLICATES_RANGE_DB = (-120.0, -20.0)  # above, quite different sounds would count as one
 
 
 def read_pack(name_or_path: str | Path) -> Pack:
@@ -65,6 +68,7 @@ class _Reader(Reading):
         level, together = self.level()
         template = self.template()
         blocks = self.blocks()
+        duplicates_below_db = self.duplicates_below_db()
         tags, license_text = read_license(self, self.folder, read_tags(self))
         for name in together:
             if name not in self.walked:
@@ -84,6 +88,7 @@ class _Reader(Reading):
             template_place=self.at("files", "name"),
             tags=tags,
             license_text=license_text,
+            duplicates_below_db=duplicates_below_db,
         )
 
     def level(self) -> tuple[Level | None, tuple[str, ...]]:
@@ -96,6 +101,20 @@ class _Reader(Reading):
             return None, ()
         level = self.checked(lambda: read_level(given, lambda key: self.at("level", key)))
         return level, tuple(together)
+
+    def duplicates_below_db(self) -> float:
+        given = self.table(self.raw, (), "duplicates")
+        self.unknown(given, DUPLICATES_KEYS, "duplicates")
+        below = given.get("below", DUPLICATES_BELOW_DB)
+        if isinstance(below, str):
+            text = below.strip().removesuffix("dB").strip()
+            with contextlib.suppress(ValueError):
+                below = float(text)
+        low, high = DUPLICATES_RANGE_DB
+        if isinstance(below, bool) or not isinstance(below, int | float) or not low <= below <= high:
+            self.fault(("duplicates", "below"), shown(below), f"a null residual from {low:g} dB to {high:g} dB")
+            return DUPLICATES_BELOW_DB
+        return float(below)
 
     def template(self) -> str:
         files = self.table(self.raw, (), "files")

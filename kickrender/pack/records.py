@@ -24,6 +24,10 @@ TAKE_AXIS = "take"  # takes, counted from 1
 POINT_AXIS = "point"  # points of a drawn design, counted from 1
 OWN_AXES = (CIRCUIT_AXIS, LAYER_AXIS, TAKE_AXIS, POINT_AXIS)
 
+# Null residual below which two hits are near-duplicates, unless the pack says otherwise. A thousandth is left: as
+# little as when a decay counts as over, and the most that `verify` calls inaudible. So nothing audible is lost. [dB]
+DUPLICATES_BELOW_DB = -60.0
+
 
 class Span(NamedTuple):
     """A range as written. steps : 0 in a design that draws its points."""
@@ -139,6 +143,7 @@ class Pack:
     path : None for a text that is no file.
     level : None when none is asked for.
     license_text : the licence's words; empty when only its name is given, in `tags`.
+    duplicates_below_db : null residual below which two hits are near-duplicates. [dB]
     together : axes along which hits share one gain.
     """
 
@@ -153,6 +158,7 @@ class Pack:
     template_place: str
     tags: Tags = Tags()
     license_text: str = ""
+    duplicates_below_db: float = DUPLICATES_BELOW_DB
 
 
 @dataclass(frozen=True)
@@ -216,3 +222,4 @@ class Plan:
     left_out: tuple[Hit, ...] = ()
     tags: Tags = Tags()
     license_text: str = ""
+    duplicates_below_db: float = DUPLICATES_BELOW_DB

@@ -4,13 +4,20 @@ from __future__ import annotations
 
 import contextlib
 import tempfile
-from collections.abc import Iterator, Sequence
+from collections.abc import Collection, Iterator, Sequence
 from dataclasses import dataclass, field
 from pathlib import Path
 
 from kickrender.errors import MeasurementError, WriteError
 from kickrender.pack.batches import MOST_HITS, batches_of, groups_of
 from kickrender.pack.cluster import Cluster
+from kickrender.pack.duplicates import (
+    Duplicate,
+    duplicates_facts,
+    known_duplicates,
+    near_duplicates,
+    remove_hits,
+)
 from kickrender.pack.estimate import check_room
 from kickrender.pack.license import check_license, write_license
 from kickrender.pack.manifest import remove_manifest, stale_files, write_manifest
@@ -32,6 +39,8 @@ class Result:
 
     rendered, kept : names of hits made now, and found whole from an earlier run.
     failed : name -> why, for hits that have no file.
+    duplicates : hits that null against an earlier one.
+    left_out : names of those among them that have no files for it.
     stale : sounds of an earlier run that belong to no hit of this pack any more, by file.
     """
 
@@ -39,11 +48,16 @@ class Result:
     kept: tuple[str, ...]
     failed: dict[str, str] = field(default_factory=dict)
     stale: tuple[str, ...] = ()
+    duplicates: tuple[Duplicate, ...] = ()
+    left_out: tuple[str, ...] = ()
 
 
-def missing_hits(plan: Plan, folder: Path) -> list[Hit]:
-    """Hits to render: those without whole files of their recipe, and whoever shares a gain with them."""
-    done = {hit.name for hit in plan.hits if is_done(plan, folder, hit)}
+def missing_hits(plan: Plan, folder: Path, left_out: Collection[str] = ()) -> list[Hit]:
+    """Hits to render: those without whole files of their recipe, and whoever shares a gain with them.
+
+    left_out : hits that need no files.
+    """
+    done = {hit.name for hit in plan.hits if hit.name in left_out or is_done(plan, folder, hit)}
     return [hit for group in groups_of(plan.hits) if any(h.name not in done for h in group) for hit in group]
 
 
@@ -53,6 +67,7 @@ def render_plan(
     jobs: int = 1,
     progress: Progress = lambda hits: None,
     cluster: Cluster | None = None,
+    drop_duplicates: bool = False,
 ) -> Result:
     """Fill `folder` with the pack: a sound and a sidecar for each hit, then manifest and sheets over all.
 
@@ -66,6 +81,8 @@ def render_plan(
         Told how many more hits are done; kept ones count at once.
     cluster : Cluster, optional
         Whose workers do the work in place of processes of this machine; see `kickrender.pack.cluster.connect`.
+    drop_duplicates : bool
+        Whether near-duplicates are left out: files, manifest and sheets then speak of the first of each only.
 
     Returns
     -------
@@ -80,7 +97,8 @@ def render_plan(
     WorkerError
         If a worker process died, or no worker of the cluster is left.
     """
-    missing = missing_hits(plan, folder)
+    known = known_duplicates(plan, folder)
+    missing = missing_hits(plan, folder, {one.name for one in known or ()} if drop_duplicates else ())
     check_room(plan, folder, missing)
     _open_folder(folder)
     sheet_of(folder)  # somebody else's index.html is told of now, not after the rendering
@@ -98,11 +116,21 @@ def render_plan(
             if outcome.failure:
                 failed[outcome.name] = outcome.failure
     write_license(plan, folder)
-    write_manifest(plan, folder, failed)
+    duplicates = near_duplicates(plan, folder, failed) if known is None or failed else known
+    left_out = tuple(one.name for one in duplicates) if drop_duplicates else ()
+    # The manifest goes first: whoever goes on after a stop here knows from it what was to be taken away.
+    write_manifest(plan, folder, failed, duplicates_facts(plan, duplicates, drop_duplicates), left_out)
+    remove_hits(plan, folder, left_out)
     write_sheets(folder)
-    rendered = tuple(hit.name for hit in missing if hit.name not in failed)
-    in_order = {hit.name: failed[hit.name] for hit in plan.hits if hit.name in failed}
-    return Result(rendered, tuple(hit.name for hit in plan.hits if hit.name in kept), in_order, stale)
+    gone = {*failed, *left_out}
+    return Result(
+        rendered=tuple(hit.name for hit in missing if hit.name not in gone),
+        kept=tuple(hit.name for hit in plan.hits if hit.name in kept - gone),
+        failed={hit.name: failed[hit.name] for hit in plan.hits if hit.name in failed},
+        stale=stale,
+        duplicates=duplicates,
+        left_out=left_out,
+    )
 
 
 def _render(

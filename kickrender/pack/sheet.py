@@ -90,6 +90,8 @@ def sheet_bytes(
         about=manifest["about"],
         facts=_facts(manifest, scale),
         failed=manifest["failed"],
+        duplicates=manifest["duplicates"]["found"],
+        left_out=manifest["duplicates"]["left_out"],
         made_from=made_from,
         companions=companions,
     )

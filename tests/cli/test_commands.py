@@ -195,10 +195,24 @@ def test_a_pack_with_a_silent_hit_renders_the_others_and_fails(run: Run, folder:
     Path("pack.toml").write_text(text)
     ran = run("pack", "pack.toml", "--out", "out", "--jobs", "1")
     assert ran.code == 1
-    assert ran.out == "out: 4 hits, 4 of them rendered now\n"
-    assert ran.err.splitlines() == [
+    assert ran.out == "out: 4 hits, 4 of them rendered now, 2 near duplicates\n"
+    assert [line for line in ran.err.splitlines() if line.startswith("kickrender")] == [
         f"kickrender: {tone}/0V: no momentary level: the sound is silent" for tone in ("0.1", "0.5")
     ]
+
+
+def test_near_duplicates_are_told_and_left_out(run: Run, folder: Path) -> None:
+    """A linear circuit struck harder sounds the same at one loudness."""
+    Path("pack.toml").write_text(Path("pack.toml").read_text().replace('together = ["accent"]', ""))
+    ran = run("pack", "pack.toml", "--out", "out", "--jobs", "1")
+    assert ran.out == "out: 6 hits, 6 of them rendered now, 4 near duplicates\n"
+    *told, advice = ran.err.splitlines()
+    assert re.fullmatch(r"note: 0\.1/3V is a near duplicate of 0\.1/1V: they null to -\d+\.\d dB", told[0])
+    assert (len(told), advice) == (4, "note: --drop-duplicates leaves near duplicates out")
+    ran = run("pack", "pack.toml", "--out", "out", "--jobs", "1", "--drop-duplicates")
+    assert ran.out == "out: 2 hits, 0 of them rendered now, 4 near duplicates left out\n"
+    assert "note: left out: 0.1/3V is a near duplicate of 0.1/1V" in ran.err
+    assert sorted(path.name for path in Path("out").rglob("*.wav")) == ["1V.wav", "1V.wav"]
 
 
 @pytest.mark.parametrize(("name", "hits"), [("night-ferry", 48)])

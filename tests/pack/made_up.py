@@ -41,6 +41,7 @@ def manifest_of(hits: Sequence[dict[str, Any]], title: str = "Made up", **more: 
         "shares_gain_along": [],
         "hits": list(hits),
         "failed": [],
+        "duplicates": {"below_db": -60.0, "left_out": False, "searched": "", "found": []},
         **more,
     }
 

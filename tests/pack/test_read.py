@@ -58,8 +58,8 @@ def test_blocks_add_to_and_replace_what_the_file_says(folder: Path) -> None:
     ("old", "new", "faults"),
     [
         ("[axes]", "[axis]", ["p.toml:12, axis: unknown key 'axis'; allowed: title, about, sound, level, files, tags, "
-                              "license, circuit, axes, fixed, design, layers, takes, hits, blocks; did you mean "
-                              "'axes'?",
+                              "license, duplicates, circuit, axes, fixed, design, layers, takes, hits, blocks; "
+                              "did you mean 'axes'?",
                               "p.toml:11, level.together: no axis 'accent'; allowed: circuit"]),
         ('title = "Plain pack"', "", ["p.toml, title: key 'title' is missing; allowed: a text in quotes"]),
         ('"voice.toml"', '"voic.toml"', ["FOLDER/voic.toml: cannot read FOLDER/voic.toml: No such file or directory; "
