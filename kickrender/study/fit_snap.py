@@ -1,8 +1,8 @@
 """Finds the combinations of preferred values that come nearest to a fit's goals.
 
 All combinations around the place where free values meet the goals are foretold from measured slopes and bends. The most
-promising are struck; what is measured corrects the rest, each by its nearest neighbour that was struck; and so on
-until nothing better is promised.
+promising are struck; what is measured corrects what is foretold of the rest; and so on until nothing better is
+promised.
 """
 
 from __future__ import annotations
@@ -20,6 +20,7 @@ from kickrender.study.fit_bench import Bench
 
 _BATCH = 24
 _BATCHES = 5
+_HOPELESS = 4.0  # times as far off as what is kept: no combination is foretold so badly
 _REACH = 0.7  # how far from the free values a series' value may lie, as a logarithm: twice as large
 _MOST_COMBINATIONS = 200_000
 _MOST_CORRECTED = 5_000
@@ -43,7 +44,7 @@ def snapped(bench: Bench, place: Place, series: Mapping[str, str], count: int) -
         now = np.where(struck, np.inf, _sizes(_corrected(grid, promised, struck, measured) - bench.wanted))
         batch = [int(k) for k in np.argsort(now, kind="stable")[:_BATCH] if np.isfinite(now[k])]
         kept = np.sort(_sizes(measured[struck & np.isfinite(measured).all(axis=1)] - bench.wanted))
-        if not batch or (len(kept) >= count and now[batch[0]] > 2.0 * kept[count - 1]):
+        if not batch or (len(kept) >= count and now[batch[0]] > _HOPELESS * kept[count - 1]):
             break
         for k, found in zip(batch, bench.measure([grid[k] for k in batch]), strict=True):
             struck[k] = True
@@ -72,12 +73,19 @@ def _combinations(bench: Bench, place: Place, series: Mapping[str, str]) -> Floa
 
 
 def _corrected(grid: Floats, promised: Floats, struck: NDArray[np.bool_], measured: Floats) -> Floats:
-    """What is foretold, moved by what the nearest struck combination was off."""
+    """What is foretold, moved by what the struck combinations were off: cubic splines through those, in many
+    dimensions."""
+    from scipy.interpolate import RBFInterpolator  # slow to import
+
     known = np.flatnonzero(struck & np.isfinite(measured).all(axis=1))
     if not len(known):
         return promised
-    nearest = known[np.argmin(((grid[:, None, :] - grid[None, known, :]) ** 2).sum(axis=2), axis=1)]
-    return promised + (measured - promised)[nearest]
+    points, off = grid[known], (measured - promised)[known]
+    dimensions = grid.shape[1]
+    # cubic ones need a straight line underneath, and points that say how it lies
+    whole = len(known) > dimensions and np.linalg.matrix_rank(points - points[0], tol=1e-6) == dimensions
+    kernel, degree = ("cubic", 1) if whole else ("linear", 0)
+    return promised + RBFInterpolator(points, off, kernel=kernel, degree=degree)(grid)
 
 
 def _sizes(errors: Floats) -> Floats:
