@@ -78,13 +78,25 @@ def cells_across(settings: Sequence[Mapping[str, Any]]) -> int:
     """
     count = len(settings)
     ideal = max(1.0, math.sqrt(count * CELL_INCHES[1] / CELL_INCHES[0] * 1.2))
-    sizes = [len({axes.get(name) for axes in settings}) for name in (settings[0] if settings else {})]
+    sizes = [len({axes.get(name) for axes in settings}) for name in _walked(settings)]
     if math.prod(sizes) == count:
         turns = [math.prod(sizes[k:]) for k in range(len(sizes) + 1)]
         nearest = min(turns, key=lambda n: abs(math.log(n / ideal)))
         if ideal / 3 <= nearest <= min(3 * ideal, MOST_CELLS_ACROSS):
             return nearest
     return max(1, min(count, MOST_CELLS_ACROSS, round(ideal)))
+
+
+def _walked(settings: Sequence[Mapping[str, Any]]) -> list[str]:
+    """Axes that are walked on their own, without those that follow others, as a layer's settings follow its number."""
+    walked: list[str] = []
+    told = 1
+    for name in settings[0] if settings else {}:
+        apart = len({tuple(axes.get(one) for one in (*walked, name)) for axes in settings})
+        if apart > told:
+            walked.append(name)
+            told = apart
+    return walked
 
 
 def _labels(hits: Sequence[Mapping[str, Any]], across: int, down: int) -> tuple[list[str], list[str]]:
@@ -95,7 +107,7 @@ def _labels(hits: Sequence[Mapping[str, Any]], across: int, down: int) -> tuple[
     varying = [name for name in (settings[0] if settings else {}) if len({axes.get(name) for axes in settings}) > 1]
 
     def shared(group: Sequence[Mapping[str, Any]], join: str) -> str:
-        same = [name for name in varying if len({axes.get(name) for axes in group}) == 1]
+        same = [name for name in varying if name in group[0] and len({axes.get(name) for axes in group}) == 1]
         return join.join(f"{name} {_short(group[0].get(name))}" for name in same)
 
     row_texts = [shared(row, ", ") for row in rows] if down <= MOST_LABELS else []

@@ -18,7 +18,7 @@ from kickrender.sound.files import write_whole
 from kickrender.sound.page.frame import pages_digest
 from kickrender.sound.sidecar import read_sidecar
 
-SHEETS_VERSION = 1  # raise it when the same manifest is to give other sheets
+SHEETS_VERSION = 2  # raise it when the same manifest is to give other sheets
 _MADE_FROM = re.compile(rb'<meta name="made-from" content="([0-9a-f]{64})">')
 _HEAD_BYTES = 2000
 

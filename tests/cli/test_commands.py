@@ -215,7 +215,7 @@ def test_near_duplicates_are_told_and_left_out(run: Run, folder: Path) -> None:
     assert sorted(path.name for path in Path("out").rglob("*.wav")) == ["1V.wav", "1V.wav"]
 
 
-@pytest.mark.parametrize(("name", "hits"), [("night-ferry", 48)])
+@pytest.mark.parametrize(("name", "hits"), [("night-ferry", 48), ("car-deck", 30)])
 def test_a_shipped_pack_plans(name: str, hits: int, run: Run) -> None:
     lines = run("pack", name, "--dry-run").out.splitlines()
     count = int(re.findall(r": (\d+) hits, about", lines[0])[0])

@@ -11,7 +11,7 @@ import numpy as np
 import pytest
 from matplotlib.image import imread
 
-from kickrender.pack.contact import cells_across, contact_sheet
+from kickrender.pack.contact import _labels, cells_across, contact_sheet
 from kickrender.pack.thumbnails import scale_of, thumbnail, thumbnails_of
 from tests.pack.made_up import RATE_HZ, entry, make_measurements, make_pack, manifest_of
 
@@ -32,12 +32,18 @@ def grid(*sizes: int) -> list[dict[str, Any]]:
         (grid(7, 2), 2),
         (grid(5000), 59),  # ... and many are wrapped
         (grid(2, 3)[:5], 2),  # no full grid
+        ([{**axes, "same": 2 * axes["b"]} for axes in grid(13, 3, 4)], 12),  # an axis that follows another
         ([{}], 1),
         ([], 1),
     ],
 )
 def test_the_grid_is_cut_along_its_axes(settings: list[dict[str, Any]], across: int) -> None:
     assert cells_across(settings) == across
+
+
+def test_an_axis_that_a_hit_does_not_walk_labels_nothing() -> None:
+    hits = [{"axes": {"voice": "a", "tone": tone}} for tone in (1.0, 2.0)] + [{"axes": {"voice": "b"}}] * 2
+    assert _labels(hits, 2, 2)[0] == ["voice a", "voice b"]
 
 
 def picture_of(manifest: dict[str, Any], thumbnails: Any) -> Any:
