@@ -82,6 +82,8 @@ UNITS: Mapping[str, Unit] = MappingProxyType(
     }
 )
 
+CODED_UNITS = tuple(unit for unit, rule in UNITS.items() if rule.code)  # those with a letter code
+
 # [0-9] and not \d: float() and \d also take other scripts' digits, and float() takes underscores.
 _NUMBER = re.compile(r"([+-]?(?:[0-9]+\.?[0-9]*|\.[0-9]+))(?:[eE]([+-]?[0-9]{1,4}))?\s*(.*)", re.DOTALL)
 _CODE = re.compile(r"([0-9]*)([^0-9\s.+-])([0-9]*)")

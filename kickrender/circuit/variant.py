@@ -14,9 +14,7 @@ from kickrender.circuit.kinds import KINDS, Choice, Flag, Quantity
 from kickrender.circuit.records import Constant, Control, Part, Pulse, Wave
 from kickrender.circuit.settings import TEMPERATURE, with_level
 from kickrender.circuit.shipped import shipped_circuits
-from kickrender.circuit.values import letter_code
-
-_CODED = ("ohm", "F", "H")
+from kickrender.circuit.values import CODED_UNITS, letter_code
 
 
 def variant_text(circuit: Circuit, settings: Mapping[str, float | bool], folder: Path, title: str, about: str) -> str:
@@ -85,7 +83,7 @@ def _part(part: Part, value: float | bool) -> str:
 
 def _number(value: float, unit: str) -> str:
     """As a schematic has it: a letter code with the small k and u that keyboards and circuit files use."""
-    if unit in _CODED:
+    if unit in CODED_UNITS:
         return _text(letter_code(value, unit).replace("K", "k").replace("\u00b5", "u"))
     return repr(value)
 

@@ -11,7 +11,7 @@ from kickrender.circuit import Circuit, ResolvedCircuit
 from kickrender.circuit.kinds import KINDS, Choice, Quantity
 from kickrender.circuit.records import Part, ResolvedPart
 from kickrender.circuit.settings import unit_of
-from kickrender.circuit.values import format_value, letter_code
+from kickrender.circuit.values import CODED_UNITS, format_value, letter_code
 from kickrender.errors import Fault, InputError, SolveError
 from kickrender.sound.options import LONGEST_UNASKED_S
 from kickrender.sound.render import Settings
@@ -24,7 +24,6 @@ CAUTION = (
 )
 MOST_WALKED = 8  # controls; every one more doubles the hits
 _SIDE_BY_SIDE = 32  # hits whose every net is kept at once: bounds memory
-_CODED = ("ohm", "F", "H")  # units with a letter code
 
 
 @dataclass(frozen=True)
@@ -195,7 +194,7 @@ def _value_text(part: Part, values: Mapping[str, float]) -> str:
     for key, value in values.items():
         rule = row.fields.get(key)
         unit = rule.unit if isinstance(rule, Quantity) else row.units.get(key, "")
-        texts.append(letter_code(value, unit) if unit in _CODED else format_value(value, unit))
+        texts.append(letter_code(value, unit) if unit in CODED_UNITS else format_value(value, unit))
     if isinstance(row.fields.get("taper"), Choice):
         texts.append(part.taper)
     return " ".join(texts)

@@ -16,10 +16,11 @@ from numpy.typing import NDArray
 
 from kickrender.circuit.records import GROUND, ResolvedCircuit, Sine, Wave
 from kickrender.engine import Solution, rest_state, solve_each
-from kickrender.engine.equations import matrix_at
-from kickrender.engine.lanes import FLAT, LONE, PADDING
+from kickrender.engine.equations import evaluate_devices
+from kickrender.engine.lanes import FLAT, PADDING
 from kickrender.engine.plan import Plan
 from kickrender.engine.program import build_program
+from kickrender.engine.solve import SIDE_BY_SIDE
 from kickrender.engine.stamps import Stamps
 from kickrender.engine.topology import numbers_of, stamp_all, topology_of
 from kickrender.engine.waves import corners
@@ -169,25 +170,26 @@ def _device_outputs(circuit: ResolvedCircuit, stamps: Sequence[Stamps], motion: 
     topology = topology_of(circuit, stamps)
     order = tuple(range(topology.size))
     program = build_program(topology, Plan(order, order))
-    code, layout = program.code, program.layout(numbers_of(circuit, topology, stamps))
-    numbers = np.append(layout, np.zeros(PADDING))
-    coefficients, vectors = np.zeros(code.coefficients), np.zeros(code.vectors + len(FLAT))
-    coefficients[: code.g] = layout[: code.g]
-    vectors[code.stride + code.inputs :][: code.known - code.inputs] = layout[code.n_held :]
+    code, lanes = program.code, len(SIDE_BY_SIDE)
+    # The kernel takes as many states at once as there are lanes: its vectors hold a row of lanes for each net.
     shape = motion.values[GROUND].shape
-    states = np.array([motion.values[name].ravel() for name in topology.unknowns]).T.copy()
-    inputs = np.array([motion.values[name].ravel() for name in topology.inputs]).reshape(-1, states.shape[0]).T.copy()
-    none, still, no_sines = np.zeros(1), np.zeros(code.inputs), np.zeros(3 * code.inputs)
-    outputs = np.empty((len(states), code.outputs))
-    now, computed = vectors[: topology.size], vectors[code.v_outputs :][: code.outputs]
-    for k in range(len(states)):
-        now[:] = states[k]
-        matrix_at(code, numbers, coefficients, vectors, 0.0, none, inputs[k], still, no_sines, LONE)
-        outputs[k] = computed
+    count = motion.values[GROUND].size
+    vectors = np.zeros((-(-count // lanes), code.vectors + len(FLAT), lanes))
+    for names, first in ((topology.unknowns, 0), ((*topology.inputs, *topology.held), code.stride)):
+        for row, name in enumerate(names, first):
+            padded = np.resize(motion.values[name], len(vectors) * lanes)
+            vectors[:, row, :] = padded.reshape(-1, lanes)
+    layout = program.layout(numbers_of(circuit, topology, stamps))
+    numbers = np.repeat(np.append(layout, np.zeros(PADDING)), lanes)
+    exponentials = np.zeros((3, (code.exponentials + len(FLAT)) * lanes))
+    tanhs, slopes = np.zeros((code.tanhs + len(FLAT)) * lanes), np.zeros(code.slopes * lanes)
+    for some in vectors:
+        evaluate_devices(code, numbers, some.ravel(), *exponentials, tanhs, slopes, False, SIDE_BY_SIDE)
     by_device: dict[int, Floats] = {}
-    first = 0
+    first = code.v_outputs
     for index, device in zip(topology.device_order, topology.devices, strict=True):
-        by_device[index] = outputs[:, first : first + device.outputs].T.reshape(-1, *shape)
+        rows = vectors[:, first : first + device.outputs, :].transpose(1, 0, 2).reshape(device.outputs, -1)
+        by_device[index] = rows[:, :count].reshape(-1, *shape)
         first += device.outputs
     return [by_device[index] for index in range(len(by_device))]
 
