@@ -14,9 +14,10 @@ from pathlib import Path
 
 import kickrender
 from kickrender.circuit import read_circuit, shipped_circuits
-from kickrender.sound.options import FORMATS, SoundOptions
+from kickrender.sound.options import SoundOptions
 
 LENGTH_S, LEVEL = 0.4, "-20 LUFS"
+FORMATS = ("pcm16", "pcm24", "float32")  # a FLAC file holds the samples and has the digest of one of these
 HARD = ("drive", "accent", "brightness")  # controls that tell a hard hit from a soft one, as far as a circuit has them
 
 

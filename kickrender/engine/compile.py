@@ -28,16 +28,35 @@ _IMPORT = re.compile(r"^ *from (kickrender[\w.]*) import (\([^)]*\)|[^\n#]+)", r
 
 
 def kernel(function: Callable[..., Any]) -> Callable[..., Any]:
-    """Compile `function` to machine code on first use, kept on disk under the digest of the kernel sources."""
-    return _compiled(function, called_from_python=True)
+    """Compile `function` to machine code on first use, kept on disk under the digest of the kernel sources.
+
+    It must allocate nothing. References to its arrays are not counted then: every count is an atomic operation that
+    waits for all stores before it.
+    """
+    return _compiled(function)
 
 
 def inner_kernel(function: Callable[..., Any]) -> Callable[..., Any]:
-    """Like `kernel`, for functions that only other kernels call: without the door to Python they compile quicker."""
-    return _compiled(function, called_from_python=False)
+    """Like `kernel`, for functions that only other kernels call: each caller gets a copy of the code.
+
+    A call would put every field of every array it hands over on the stack, some three hundred words for a program.
+    """
+    return _compiled(function, door=False, copied=True)
 
 
-def _compiled(function: Callable[..., Any], called_from_python: bool) -> Callable[..., Any]:
+def shared_kernel(function: Callable[..., Any]) -> Callable[..., Any]:
+    """Like `inner_kernel`, for what is called seldom and from several places: one piece of code for all of them."""
+    return _compiled(function, door=False)
+
+
+def allocating_kernel(function: Callable[..., Any]) -> Callable[..., Any]:
+    """Like `kernel`, for functions that make arrays of their own; not for innermost loops."""
+    return _compiled(function, allocates=True)
+
+
+def _compiled(
+    function: Callable[..., Any], *, door: bool = True, copied: bool = False, allocates: bool = False
+) -> Callable[..., Any]:
     folder = cache_folder(Path(function.__code__.co_filename))
     before = config.CACHE_DIR
     config.CACHE_DIR = str(folder)  # numba reads it when the function is decorated
@@ -46,8 +65,10 @@ def _compiled(function: Callable[..., Any], called_from_python: bool) -> Callabl
             cache=True,
             nogil=True,
             error_model="numpy",
-            no_cpython_wrapper=not called_from_python,
+            no_cpython_wrapper=not door,
             no_cfunc_wrapper=True,
+            _nrt=allocates,
+            forceinline=copied,
         )(function)
     finally:
         config.CACHE_DIR = before

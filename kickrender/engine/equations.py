@@ -8,29 +8,31 @@ from __future__ import annotations
 
 import numpy as np
 
-from kickrender.engine.compile import inner_kernel, kernel
+from kickrender.engine.compile import allocating_kernel, inner_kernel
 from kickrender.engine.elementary import exponential, hyperbolic_tangent, sine_of_turns
-from kickrender.engine.lanes import FLAT, gather, load, pick_less, spread, store
+from kickrender.engine.lanes import FLAT, any_less, gather, load, pick_less, spread, store
 from kickrender.engine.laws import evaluate as evaluate_laws
 from kickrender.engine.method import RODAS5P
 
 _PER_GAMMA = 1.0 / RODAS5P.gamma
-_HIGHEST_ARGUMENT = 80.0  # of a junction's exponential; continued linearly above
+_HIGHEST_ARGUMENT = 80.0  # of an exponential; continued linearly above
+_LOWEST_ARGUMENT = -80.0  # below, e^x counts as nothing: beside what it is added to it would vanish in rounding
 _TWO_PI = 6.283185307179586
 _BEYOND = 1e300  # any growth
 
 
-@kernel
+@inner_kernel
 def evaluate_devices(code, numbers, vectors, arguments, exp_slopes, exp_values, tanhs, slopes, with_slopes, width):
     """Outputs (in `vectors`) and, if asked, slopes of all devices at the voltages in `vectors`; in place.
 
-    The exponentials of all junctions and limits are evaluated together, in passes over flat memory. A lone lane's
-    voltages go into these passes straight from where they are: written one by one and read back as a block they
-    would hold the processor up.
+    The exponentials of all junctions and limits are evaluated together, in passes over flat memory; a block of which
+    none counts is passed over. A lone lane's voltages go into these passes straight from where they are: written one
+    by one and read back as a block they would hold the processor up.
     """
     lanes = len(width)
     scale, offset = code.n_exponentials, code.n_exponentials + code.exponentials
     per_input, per_own = code.n_tanhs, code.n_tanhs + code.tanhs
+    nothing = spread(0.0, FLAT)
     if lanes > 1:
         for e in range(code.exponentials):
             v = load(vectors, code.exp_plus[e] * lanes, width) - load(vectors, code.exp_minus[e] * lanes, width)
@@ -47,10 +49,14 @@ def evaluate_devices(code, numbers, vectors, arguments, exp_slopes, exp_values, 
             store(arguments, start, x)
         else:
             x = load(arguments, start, FLAT)
-        bounded = pick_less(_HIGHEST_ARGUMENT, x, _HIGHEST_ARGUMENT, x)
-        slope = exponential(bounded)
-        store(exp_slopes, start, slope)
-        store(exp_values, start, slope + slope * (x - bounded))
+        if any_less(_LOWEST_ARGUMENT, x):
+            bounded = pick_less(_HIGHEST_ARGUMENT, x, _HIGHEST_ARGUMENT, x)
+            slope = pick_less(x, _LOWEST_ARGUMENT, 0.0, exponential(bounded))
+            store(exp_slopes, start, slope)
+            store(exp_values, start, slope + slope * (x - bounded))
+        else:
+            store(exp_slopes, start, nothing)
+            store(exp_values, start, nothing)
     for start in range(0, code.tanhs * lanes, len(FLAT)):
         if lanes == 1:
             v = gather(vectors, code.tanh_plus, start, FLAT) - gather(vectors, code.tanh_minus, start, FLAT)
@@ -89,22 +95,28 @@ def set_inputs(code, time, segment_t, segment_v, segment_slope, sines, vectors, 
 
 
 @inner_kernel
-def assemble(code, coefficients, slopes, width):
-    """W = C/(gamma h) + G + device slopes into its section of `coefficients`, whose section ch holds C/h."""
+def spread_conductances(code, coefficients, base, lane, lanes):
+    """G of one lane where W's entries lie, into `base`, shape (rows of w,); in place."""
+    for e in range(code.w):
+        base[e * lanes + lane] = 0.0
+    for p in range(code.assemble_g.shape[0]):
+        base[code.assemble_g[p, 0] * lanes + lane] -= coefficients[code.assemble_g[p, 1] * lanes + lane]
+
+
+@inner_kernel
+def assemble(code, coefficients, base, slopes, width):
+    """W = C/(gamma h) + G + device slopes into its section of `coefficients`, whose section ch holds C/h.
+
+    base : what spread_conductances left of G.
+    """
     lanes = len(width)
     first = code.first_w
-    nothing = spread(0.0, width)
-    for e in range(code.w):
-        store(coefficients, (first + e) * lanes, nothing)
+    for p in range(0, code.w * lanes, len(FLAT)):
+        store(coefficients, first * lanes + p, load(base, p, FLAT))
     for p in range(code.assemble_c.shape[0]):
         at = (first + code.assemble_c[p, 0]) * lanes
         c = load(coefficients, (code.first_ch + code.assemble_c[p, 1]) * lanes, width)
         store(coefficients, at, load(coefficients, at, width) + c * _PER_GAMMA)
-    for p in range(code.assemble_g.shape[0]):
-        at = (first + code.assemble_g[p, 0]) * lanes
-        store(
-            coefficients, at, load(coefficients, at, width) - load(coefficients, code.assemble_g[p, 1] * lanes, width)
-        )
     for p in range(code.assemble_slope.shape[0]):
         at = (first + code.assemble_slope[p, 0]) * lanes
         slope = load(slopes, code.assemble_slope[p, 1] * lanes, width) * code.assemble_sign[p]
@@ -112,7 +124,7 @@ def assemble(code, coefficients, slopes, width):
 
 
 @inner_kernel
-def factorise(code, coefficients, per_pivot, row_size, width):
+def factorise(code, coefficients, per_pivot, row_size, per_row_size, width):
     """Eliminate in place: multipliers (negated) below the pivots, U above, reciprocal pivots in `per_pivot`.
 
     Returns the largest multiplier between rows scaled to equal size, one per lane; _BEYOND where a pivot was zero.
@@ -126,6 +138,8 @@ def factorise(code, coefficients, per_pivot, row_size, width):
             w = pick_less(w, 0.0, 0.0 - w, w)
             size = pick_less(size, w, w, size)
         store(row_size, row * lanes, size)
+    for p in range(0, code.size * lanes, len(FLAT)):
+        store(per_row_size, p, 1.0 / load(row_size, p, FLAT))
     for k in range(code.size):
         reciprocal = 1.0 / load(coefficients, (first + code.diagonal[k]) * lanes, width)
         store(per_pivot, k * lanes, reciprocal)
@@ -140,8 +154,8 @@ def factorise(code, coefficients, per_pivot, row_size, width):
     worst = spread(0.0, width)
     for p in range(code.growth.shape[0]):
         multiplier = load(coefficients, (first + code.growth[p, 0]) * lanes, width)
-        size = load(row_size, code.growth[p, 1] * lanes, width)
-        growth = multiplier * load(row_size, code.growth[p, 2] * lanes, width) / size
+        growth = multiplier * load(row_size, code.growth[p, 2] * lanes, width)
+        growth = growth * load(per_row_size, code.growth[p, 1] * lanes, width)
         growth = pick_less(growth, 0.0, 0.0 - growth, growth)
         growth = pick_less(growth, _BEYOND, growth, _BEYOND)  # and where a pivot was nothing: 0/0 is not a number
         worst = pick_less(growth, worst, worst, growth)
@@ -170,7 +184,7 @@ def time_derivative(code, coefficients, slopes, vectors, second, rate, width):
         store(rate, at, load(rate, at, width) + farad * load(second, code.input_cu[p, 2] * lanes, width))
 
 
-@kernel
+@inner_kernel
 def residual(code, numbers, coefficients, vectors, rate, rate_weight, width):
     """Right-hand side and forward substitution in one dot product per row, into section y of `vectors`.
 
@@ -188,7 +202,7 @@ def residual(code, numbers, coefficients, vectors, rate, rate_weight, width):
         store(vectors, (code.v_y + row) * lanes, total + other)
 
 
-@kernel
+@inner_kernel
 def back_substitute(code, coefficients, per_pivot, vectors, solution, start, width):
     """Solve U k = y; k goes to row `start` and on of `solution`."""
     lanes = len(width)
@@ -202,20 +216,22 @@ def back_substitute(code, coefficients, per_pivot, vectors, solution, start, wid
         store(solution, (start + row) * lanes, total * load(per_pivot, row * lanes, width))
 
 
-@kernel
+@allocating_kernel
 def matrix_at(code, numbers, coefficients, vectors, time_s, segment_t, segment_v, segment_slope, sines, width):
     """Assemble W of one hit at the voltages in `vectors`, into section w of `coefficients`; returns the slopes.
 
     width : lanes.LONE.
     """
-    arguments = np.zeros(code.exponentials + len(FLAT))
-    exp_slopes = np.zeros(code.exponentials + len(FLAT))
-    exp_values = np.zeros(code.exponentials + len(FLAT))
+    arguments = np.zeros(code.exponentials)
+    exp_slopes = np.zeros(code.exponentials)
+    exp_values = np.zeros(code.exponentials)
     tanhs = np.zeros(code.tanhs + len(FLAT))
     slopes = np.zeros(code.slopes)
     second = np.zeros(code.inputs)
     time = spread(time_s, width)
     set_inputs(code, time, segment_t, segment_v, segment_slope, sines, vectors, second, width)
     evaluate_devices(code, numbers, vectors, arguments, exp_slopes, exp_values, tanhs, slopes, code.size > 0, width)
-    assemble(code, coefficients, slopes, width)
+    base = np.zeros(code.coefficients - code.first_w)
+    spread_conductances(code, coefficients, base, 0, 1)
+    assemble(code, coefficients, base, slopes, width)
     return slopes

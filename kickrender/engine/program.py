@@ -24,11 +24,14 @@ import numpy as np
 from numpy.typing import NDArray
 
 from kickrender.engine.lanes import PADDING
-from kickrender.engine.laws import LAWS
+from kickrender.engine.laws import LAWS, SEPARATE
 from kickrender.engine.plan import Plan
 from kickrender.engine.topology import Numbers, Topology
 
 Indices = NDArray[np.uint32]
+
+_NO_EXPONENTIAL = (0, 0)  # nets of a place that fills up a block
+_TOO_LOW = -1000.0  # its argument
 
 
 class Code(NamedTuple):
@@ -47,13 +50,13 @@ class Code(NamedTuple):
     first_ch: int
     w: int
     first_w: int
-    coefficients: int
+    coefficients: int  # rows, w padded to a multiple of lanes.PADDING
     v_outputs: int
     v_zc: int
     v_du: int
     v_y: int
     vectors: int
-    exponentials: int
+    exponentials: int  # places for them, a multiple of lanes.PADDING
     tanhs: int
     n_c: int  # first rows of the sections of a hit's numbers; -G and cu come first
     n_b: int
@@ -89,7 +92,7 @@ class Code(NamedTuple):
     exp_minus: Indices
     tanh_plus: Indices
     tanh_minus: Indices
-    tanh_own: Indices  # the last five padded with zeros to a multiple of lanes.PADDING
+    tanh_own: Indices  # the last three padded with zeros to a multiple of lanes.PADDING
 
 
 @dataclass(frozen=True, eq=False)
@@ -101,6 +104,7 @@ class Program:
     code: Code
     g_of_entry: NDArray[np.int64]  # kept entries of G (unknown or input column), in section order
     held_entries: tuple[tuple[int, int, int], ...]  # (entry of G, row position, held net)
+    exponential_at: NDArray[np.int64]  # place of each device's exponentials, in the devices' order
     c_of_entry: NDArray[np.int64]
     cu_of_entry: NDArray[np.int64]
     pattern: tuple[tuple[int, int], ...]  # (row, column) of every entry of W, by row
@@ -122,14 +126,19 @@ class Program:
                 -numbers.c[self.cu_of_entry],
                 numbers.c[self.c_of_entry],
                 b,
-                numbers.exponentials[:, 0],
-                numbers.exponentials[:, 1],
+                *self._padded_exponentials(numbers),
                 numbers.tanhs[:, 0],
                 numbers.tanhs[:, 1],
                 numbers.parameters,
                 numbers.held_v,
             ]
         )
+
+    def _padded_exponentials(self, numbers: Numbers) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+        """Inverse scales and offsets at their places; the places between hold arguments too low to count."""
+        scales, offsets = np.zeros(self.code.exponentials), np.full(self.code.exponentials, _TOO_LOW)
+        scales[self.exponential_at], offsets[self.exponential_at] = numbers.exponentials.T
+        return scales, offsets
 
 
 def build_program(topology: Topology, plan: Plan) -> Program:
@@ -159,6 +168,7 @@ def build_program(topology: Topology, plan: Plan) -> Program:
     # devices
     spans = np.zeros((len(LAWS), 6), dtype=np.int64)
     exponentials: list[tuple[int, int]] = []
+    exponential_at: list[int] = []
     tanhs: list[tuple[int, int, int]] = []
     flows: list[tuple[int, int, float]] = []
     derivatives: list[tuple[int, int, int, float]] = []
@@ -166,8 +176,11 @@ def build_program(topology: Topology, plan: Plan) -> Program:
     for device in topology.devices:
         span = spans[LAWS.index(device.law)]
         if span[0] == 0:
+            if device.law in SEPARATE:
+                exponentials += [_NO_EXPONENTIAL] * (-len(exponentials) % PADDING)
             span[1:] = len(exponentials), len(tanhs), outputs, slopes, parameters
         span[0] += 1
+        exponential_at += range(len(exponentials), len(exponentials) + len(device.exponentials))
         exponentials += [(position(topology.columns[p]), position(topology.columns[m])) for p, m in device.exponentials]
         tanhs += [tuple(position(topology.columns[net]) for net in nets) for nets in device.tanhs]  # type: ignore[misc]
         for row_name, output, sign in device.flows:
@@ -180,6 +193,8 @@ def build_program(topology: Topology, plan: Plan) -> Program:
         outputs += device.outputs
         slopes += device.slopes
         parameters += device.parameters
+
+    exponentials += [_NO_EXPONENTIAL] * (-len(exponentials) % PADDING)
 
     # pattern of W with fill, elimination
     filled: set[tuple[int, int]] = {(k, k) for k in range(size)}
@@ -265,7 +280,7 @@ def build_program(topology: Topology, plan: Plan) -> Program:
         first_ch=ch,
         w=len(pattern),
         first_w=w,
-        coefficients=w + len(pattern),
+        coefficients=w + -(-len(pattern) // PADDING) * PADDING,
         v_outputs=v_outputs,
         v_zc=v_zc,
         v_du=v_du,
@@ -303,8 +318,8 @@ def build_program(topology: Topology, plan: Plan) -> Program:
         input_slope=_indices([(row, s, column - stride) for row, column, s, _ in derivatives if column >= stride], 3),
         input_sign=np.array([sign for _, column, _, sign in derivatives if column >= stride], dtype=np.float64),
         input_cu=_indices([(row, i, source) for i, (row, source) in enumerate(cu_at)], 3),
-        exp_plus=_padded([p for p, _ in exponentials]),
-        exp_minus=_padded([m for _, m in exponentials]),
+        exp_plus=_indices([p for p, _ in exponentials]),
+        exp_minus=_indices([m for _, m in exponentials]),
         tanh_plus=_padded([nets[0] for nets in tanhs]),
         tanh_minus=_padded([nets[1] for nets in tanhs]),
         tanh_own=_padded([nets[2] for nets in tanhs]),
@@ -315,6 +330,7 @@ def build_program(topology: Topology, plan: Plan) -> Program:
         code,
         np.array(g_kept, dtype=np.int64),
         held,
+        np.array(exponential_at, dtype=np.int64),
         np.array(c_kept, dtype=np.int64),
         np.array(cu_kept, dtype=np.int64),
         pattern,

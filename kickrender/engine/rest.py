@@ -13,9 +13,9 @@ from __future__ import annotations
 
 import numpy as np
 
-from kickrender.engine.compile import inner_kernel, kernel
+from kickrender.engine.compile import allocating_kernel, inner_kernel, kernel, shared_kernel
 from kickrender.engine.elementary import logarithm
-from kickrender.engine.equations import assemble, evaluate_devices, residual
+from kickrender.engine.equations import assemble, evaluate_devices, residual, spread_conductances
 from kickrender.engine.lanes import FLAT, load, spread, store
 
 SETTLED, NOT_SETTLED = 0, 1
@@ -29,7 +29,7 @@ _FIRST_PSEUDO_STEP_S = 1e-6
 _NO_STEP_S = 1e-15
 
 
-@kernel
+@allocating_kernel
 def settle(code, hit_numbers, hit_inputs, hit_x, results, worst, work_w, work_f, limits, width):
     """Rest states of a batch.
 
@@ -46,47 +46,49 @@ def settle(code, hit_numbers, hit_inputs, hit_x, results, worst, work_w, work_f,
     size = code.size
     numbers = np.zeros(code.numbers + len(FLAT))
     vectors = np.zeros(code.vectors + len(FLAT))
-    arguments = np.zeros(code.exponentials + len(FLAT))
-    before = np.zeros(code.exponentials + len(FLAT))
-    exp_slopes = np.zeros(code.exponentials + len(FLAT))
-    exp_values = np.zeros(code.exponentials + len(FLAT))
+    arguments = np.zeros(code.exponentials)
+    before = np.zeros(code.exponentials)
+    exp_slopes = np.zeros(code.exponentials)
+    exp_values = np.zeros(code.exponentials)
     tanhs = np.zeros(code.tanhs + len(FLAT))
     slopes = np.zeros(code.slopes)
     rate = np.zeros(code.stride)
+    base = np.zeros(code.coefficients - code.first_w)
     x = np.zeros(size)
+    kept = np.zeros(size)
     dx = np.zeros(size)
     for hit in range(hit_numbers.shape[0]):
-        x[:] = 0.0
+        _fill(x, 0.0)
         iterations = 0
         level = 1.0  # of the sources
-        state = (numbers, vectors, arguments, before, exp_slopes, exp_values, tanhs, slopes, rate, x, dx)
-        _set_sources(code, hit_numbers[hit], hit_inputs[hit], 1.0, numbers, vectors, work_f)
+        state = (numbers, vectors, arguments, before, exp_slopes, exp_values, tanhs, slopes, rate, base, x, dx)
+        _set_sources(code, hit_numbers[hit], hit_inputs[hit], 1.0, numbers, vectors, work_f, base)
         done, count = _newton(code, state, work_w, work_f, 0.0, limits[0], width)
         iterations += count
         if not done:
-            x[:] = 0.0
+            _fill(x, 0.0)
+            _fill(kept, 0.0)
             level, stride = 0.0, 0.1
-            kept = x.copy()
             for _ in range(_SOURCE_STEPS):
                 trial = min(1.0, level + stride)
-                _set_sources(code, hit_numbers[hit], hit_inputs[hit], trial, numbers, vectors, work_f)
+                _set_sources(code, hit_numbers[hit], hit_inputs[hit], trial, numbers, vectors, work_f, base)
                 done, count = _newton(code, state, work_w, work_f, 0.0, limits[0], width)
                 iterations += count
                 if done:
                     level = trial
-                    kept[:] = x
+                    _copy(x, kept)
                     stride *= 1.5
                     if level == 1.0:
                         break
                 else:
-                    x[:] = kept
+                    _copy(kept, x)
                     stride *= 0.25
                     if stride < 1e-4:
                         break
             done = done and level == 1.0
         if not done:
-            x[:] = 0.0
-            _set_sources(code, hit_numbers[hit], hit_inputs[hit], 1.0, numbers, vectors, work_f)
+            _fill(x, 0.0)
+            _set_sources(code, hit_numbers[hit], hit_inputs[hit], 1.0, numbers, vectors, work_f, base)
             pseudo_step = _FIRST_PSEUDO_STEP_S
             for index in range(_PSEUDO_STEPS):
                 done, count = _newton(code, state, work_w, work_f, 1.0 / pseudo_step, limits[1], width)
@@ -102,7 +104,8 @@ def settle(code, hit_numbers, hit_inputs, hit_x, results, worst, work_w, work_f,
                     iterations += count
                     if done:
                         break
-        hit_x[hit] = x
+        for row in range(size):
+            hit_x[hit, row] = x[row]
         results[hit, 0] = SETTLED if done else NOT_SETTLED
         results[hit, 1] = iterations
         _evaluate(code, state, work_f, width)
@@ -113,7 +116,7 @@ def settle(code, hit_numbers, hit_inputs, hit_x, results, worst, work_w, work_f,
         worst[hit] = vectors[code.v_y + results[hit, 2]]
 
 
-@kernel
+@allocating_kernel
 def project(code, hit_numbers, inputs, x, work_w, work_f, limits, width):
     """Move x, in place, to the state next to it whose algebraic equations hold; charges and fluxes stay.
 
@@ -125,15 +128,17 @@ def project(code, hit_numbers, inputs, x, work_w, work_f, limits, width):
     """
     numbers = np.zeros(code.numbers + len(FLAT))
     vectors = np.zeros(code.vectors + len(FLAT))
-    arguments = np.zeros(code.exponentials + len(FLAT))
-    before = np.zeros(code.exponentials + len(FLAT))
-    exp_slopes = np.zeros(code.exponentials + len(FLAT))
-    exp_values = np.zeros(code.exponentials + len(FLAT))
+    arguments = np.zeros(code.exponentials)
+    before = np.zeros(code.exponentials)
+    exp_slopes = np.zeros(code.exponentials)
+    exp_values = np.zeros(code.exponentials)
     tanhs = np.zeros(code.tanhs + len(FLAT))
     slopes = np.zeros(code.slopes)
+    rate = np.zeros(code.stride)
+    base = np.zeros(code.coefficients - code.first_w)
     dx = np.zeros(code.size)
-    state = (numbers, vectors, arguments, before, exp_slopes, exp_values, tanhs, slopes, np.zeros(code.stride), x, dx)
-    _set_sources(code, hit_numbers, inputs, 1.0, numbers, vectors, work_f)
+    state = (numbers, vectors, arguments, before, exp_slopes, exp_values, tanhs, slopes, rate, base, x, dx)
+    _set_sources(code, hit_numbers, inputs, 1.0, numbers, vectors, work_f, base)
     longest = np.inf
     for _ in range(limits[0]):
         last = longest
@@ -147,15 +152,34 @@ def project(code, hit_numbers, inputs, x, work_w, work_f, limits, width):
     return longest
 
 
+# Loops where numpy would take one line: for a slice on the left side the compiler also compiles the wording of numpy's
+# complaints about it, some seconds of them.
 @inner_kernel
-def _set_sources(code, hit_numbers, inputs, level, numbers, vectors, coefficients):
+def _fill(target, value):
+    """Set every element, in place."""
+    for k in range(target.size):
+        target[k] = value
+
+
+@inner_kernel
+def _copy(source, target):
+    """Copy into an array of the same size, in place."""
+    for k in range(target.size):
+        target[k] = source[k]
+
+
+@shared_kernel
+def _set_sources(code, hit_numbers, inputs, level, numbers, vectors, coefficients, base):
     """Load one hit's numbers with all its sources scaled by `level`; no capacitor current, no factors."""
-    numbers[: code.numbers] = hit_numbers
-    vectors[:] = 0.0
-    coefficients[:] = 0.0
-    coefficients[: code.g] = hit_numbers[: code.g]
+    for row in range(code.numbers):
+        numbers[row] = hit_numbers[row]
+    _fill(vectors, 0.0)
+    _fill(coefficients, 0.0)
+    for row in range(code.g):
+        coefficients[row] = hit_numbers[row]
     coefficients[code.g] = 1.0
     coefficients[code.g + 1] = -1.0
+    spread_conductances(code, coefficients, base, 0, 1)
     for row in range(code.size):
         numbers[code.n_b + row] *= level
     for m in range(code.inputs):
@@ -164,23 +188,23 @@ def _set_sources(code, hit_numbers, inputs, level, numbers, vectors, coefficient
         vectors[code.stride + code.inputs + row] = hit_numbers[code.n_held + row] * level
 
 
-@inner_kernel
+@shared_kernel
 def _evaluate(code, state, coefficients, width):
     """f(x) into section y of the vectors, and every device's slopes."""
-    numbers, vectors, arguments, before, exp_slopes, exp_values, tanhs, slopes, rate, x, dx = state
+    numbers, vectors, arguments, before, exp_slopes, exp_values, tanhs, slopes, rate, base, x, dx = state
     for row in range(code.size):
         vectors[row] = x[row]
     evaluate_devices(code, numbers, vectors, arguments, exp_slopes, exp_values, tanhs, slopes, code.size > 0, width)
     residual(code, numbers, coefficients, vectors, rate, spread(0.0, width), width)
 
 
-@inner_kernel
+@shared_kernel
 def _newton(code, state, matrix, coefficients, per_pseudo_step, most, width):
     """Up to `most` damped Newton steps on C x' = f(x) with x' = dx per_pseudo_step; whether it settled, and steps.
 
     `coefficients` has a zero w section, so that section y of the vectors is f(x) itself.
     """
-    numbers, vectors, arguments, before, exp_slopes, exp_values, tanhs, slopes, rate, x, dx = state
+    numbers, vectors, arguments, before, exp_slopes, exp_values, tanhs, slopes, rate, base, x, dx = state
     size = code.size
     first = code.first_w
     last = np.inf
@@ -191,8 +215,10 @@ def _newton(code, state, matrix, coefficients, per_pseudo_step, most, width):
         for p in range(code.ch):
             # assemble() divides by gamma; a constant factor of the pseudo step does not matter
             coefficients[code.first_ch + p] = numbers[code.n_c + p] * per_pseudo_step
-        assemble(code, coefficients, slopes, width)
-        matrix[:] = 0.0
+        assemble(code, coefficients, base, slopes, width)
+        for row in range(size):
+            for column in range(size):
+                matrix[row, column] = 0.0
         for row in range(size):
             dx[row] = vectors[code.v_y + row]
             for e in range(code.w_start[row], code.w_start[row + 1]):
@@ -216,7 +242,7 @@ def _newton(code, state, matrix, coefficients, per_pseudo_step, most, width):
                 change -= dx[minus] * per_volt
             after = before[e] + change
             if after > _STEEP_ARGUMENT and change > 2.0:
-                allowed = 1.0 + _log(change, width)
+                allowed = 1.0 + _log(change, arguments, width)
                 if before[e] < _STEEP_ARGUMENT:
                     allowed += _STEEP_ARGUMENT - before[e]
                 share = min(share, allowed / change)
@@ -238,9 +264,8 @@ def _newton(code, state, matrix, coefficients, per_pseudo_step, most, width):
 
 
 @inner_kernel
-def _log(value, width):
-    """ln of one float."""
-    box = np.empty(1)
+def _log(value, box, width):
+    """ln of one float, which `box` carries in its first place."""
     box[0] = value
     store(box, 0, logarithm(load(box, 0, width)))
     return box[0]

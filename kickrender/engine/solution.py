@@ -83,9 +83,10 @@ def read_pieces(piece_t, piece_h, piece_c, net, rate_hz, first, values):
         x0, x1 = piece_c[piece, net, 0], piece_c[piece, net, 1]
         k0, k1, k2 = piece_c[piece, net, 2], piece_c[piece, net, 3], piece_c[piece, net, 4]
         per_h = 1.0 / h
-        for index in range(done, until):
-            theta = ((first + index) * period - t) * per_h
+        start = float(first + done)
+        for index in range(np.uint32(until - done)):  # 32 bits: the processor turns many of these into floats at once
+            theta = ((start + np.int32(index)) * period - t) * per_h
             rest = 1.0 - theta
-            values[index] = rest * x0 + theta * (x1 + rest * (k0 + theta * (k1 + theta * k2)))
+            values[done + index] = rest * x0 + theta * (x1 + rest * (k0 + theta * (k1 + theta * k2)))
         done = until
         piece += 1

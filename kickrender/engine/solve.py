@@ -26,9 +26,9 @@ from kickrender.engine.topology import Numbers, Topology, numbers_of, stamp_all,
 from kickrender.engine.waves import Segments, segments_of
 from kickrender.errors import SolveError
 
-ENGINE_VERSION = "1"  # moves whenever a render's bytes may move
+ENGINE_VERSION = "2"  # moves whenever a render's bytes may move
 
-DEFAULT_TOLERANCE = 5e-7  # error of one step, relative to a voltage
+DEFAULT_TOLERANCE = 8e-7  # error of one step, relative to a voltage
 ABSOLUTE_SHARE = 0.3  # volts (or amperes) below which the tolerance no longer shrinks with the value
 SIDE_BY_SIDE = (0,) * 8  # lanes
 _BATCH = 64  # hits prepared at once: bounds memory
@@ -278,6 +278,7 @@ def _run(
     results = np.zeros((count, 5), dtype=np.int64)
     end_x = np.zeros((count, code.size))
     end_t, end_h, end_worst = np.zeros((3, count))
+    width = LONE if count == 1 else SIDE_BY_SIDE
     stepper.solve(
         code,
         numbers,
@@ -300,7 +301,8 @@ def _run(
         end_t,
         end_h,
         end_worst,
-        LONE if count == 1 else SIDE_BY_SIDE,
+        stepper.work_for(code, len(probed), len(width)),
+        width,
     )
     runs = []
     for i in range(count):

@@ -6,7 +6,10 @@ alone: every operation works lane by lane, and steps, rejections and break point
 
 from __future__ import annotations
 
+from typing import NamedTuple
+
 import numpy as np
+from numpy.typing import NDArray
 
 from kickrender.engine.compile import kernel
 from kickrender.engine.elementary import exponential, logarithm
@@ -17,24 +20,119 @@ from kickrender.engine.equations import (
     factorise,
     residual,
     set_inputs,
+    spread_conductances,
     time_derivative,
 )
 from kickrender.engine.lanes import FLAT, load, pick_less, spread, store
 from kickrender.engine.method import RODAS5P
+from kickrender.engine.program import Code
 
 STAGES = RODAS5P.c.size
 _A, _C, _D, _C_TIME, _DENSE = RODAS5P.a, RODAS5P.c_rows, RODAS5P.d, RODAS5P.c, RODAS5P.dense
 _ORDER = RODAS5P.order
 
-# step control; err is the root mean square of the error estimate in units of the tolerance
+# step control; err is a root mean square of the error estimate in units of the tolerance, over no more unknowns than
+# move at once in a voice: those at rest must not make the others' tolerance looser
+_MOVING = 8
 _SAFETY = 0.9
 _LEAST_FACTOR, _MOST_FACTOR = 0.2, 6.0
 _FIRST_STEP_S = 1e-6  # after a break point, where x' jumps; never more than a thousandth of the way to the next
 _LEAST_STEP_S = 1e-15
+_MOST_OF_A_PERIOD = 0.025  # of a sine's: where nothing has a memory, no error would hold the step back
 _GROWTH_LIMIT = 1e8  # of a multiplier between rows of equal size: half the digits are lost beyond
 
 DONE, STEP_TOO_SMALL, NOT_FINITE, TOO_MANY_STEPS, NO_ROOM, PIVOT_COLLAPSED, RUNNING = 0, 1, 2, 3, 4, 5, 6
 FREE, IDLE = -1, -2  # lanes without a hit
+
+Array = NDArray[np.float64] | NDArray[np.int64]
+
+
+class Work(NamedTuple):
+    """Arrays the steps work in. A kernel that made them itself would count references to them in its loops."""
+
+    numbers: Array
+    coefficients: Array
+    base: Array
+    vectors: Array
+    x: Array
+    x_new: Array
+    k: Array
+    error: Array
+    rate: Array
+    per_pivot: Array
+    row_size: Array
+    per_row_size: Array
+    arguments: Array
+    exp_slopes: Array
+    exp_values: Array
+    tanhs: Array
+    slopes: Array
+    second: Array
+    now_t: Array  # start of the lane's segment, and the inputs over it
+    now_v: Array
+    now_slope: Array
+    sines: Array
+    dense: Array
+    t: Array
+    h: Array
+    step: Array
+    square: Array
+    factor: Array
+    growth: Array
+    hit_of: Array
+    segment: Array
+    pieces: Array
+    tried: Array
+    rejected: Array
+    streak: Array  # rejections in a row
+    last_step: Array  # of the last accepted step, 0 after a break point
+    last_factor: Array
+    longest_step: Array  # a sine's share of its period
+
+
+def work_for(code: Code, probes: int, lanes: int) -> Work:
+    """New arrays for one call of `solve`; a row is one float per lane."""
+    rows = code.stride * lanes
+    return Work(
+        numbers=np.zeros(code.numbers * lanes + len(FLAT)),
+        coefficients=np.zeros(code.coefficients * lanes),
+        base=np.zeros((code.coefficients - code.first_w) * lanes),
+        vectors=np.zeros(code.vectors * lanes + len(FLAT)),
+        x=np.zeros(rows),
+        x_new=np.zeros(rows),
+        k=np.zeros(STAGES * rows),
+        error=np.zeros(rows),
+        rate=np.zeros(rows),
+        per_pivot=np.zeros(rows),
+        row_size=np.zeros(rows),
+        per_row_size=np.zeros(rows),
+        arguments=np.zeros(code.exponentials * lanes),
+        exp_slopes=np.zeros(code.exponentials * lanes),
+        exp_values=np.zeros(code.exponentials * lanes),
+        tanhs=np.zeros(code.tanhs * lanes + len(FLAT)),
+        slopes=np.zeros(code.slopes * lanes),
+        second=np.zeros(code.inputs * lanes),
+        now_t=np.zeros(lanes),
+        now_v=np.zeros(code.inputs * lanes),
+        now_slope=np.zeros(code.inputs * lanes),
+        sines=np.zeros(3 * code.inputs * lanes),
+        dense=np.zeros(5 * probes * lanes),
+        t=np.zeros(lanes),
+        h=np.ones(lanes),
+        step=np.ones(lanes),
+        square=np.zeros(lanes),
+        factor=np.zeros(lanes),
+        growth=np.zeros(lanes),
+        hit_of=np.full(lanes, FREE),
+        segment=np.zeros(lanes, np.int64),
+        pieces=np.zeros(lanes, np.int64),
+        tried=np.zeros(lanes, np.int64),
+        rejected=np.zeros(lanes, np.int64),
+        streak=np.zeros(lanes, np.int64),
+        last_step=np.zeros(lanes),
+        last_factor=np.zeros(lanes),
+        longest_step=np.zeros(lanes),
+    )
 
 
 @kernel
@@ -60,6 +158,7 @@ def solve(
     end_t,
     end_h,
     end_worst,
+    work,
     width,
 ):
     """Solve every hit of a batch from its start state to the end of its last segment.
@@ -79,6 +178,7 @@ def solve(
     piece_c : (hits, room, probes, 5): x, x_new, K_0, K_1, K_2 of method.RODAS5P.dense.
     results : (hits, 5) int64: status, pieces, steps tried, steps rejected, worst unknown.
     end_x, end_t, end_h, end_worst : state where each hit ended, whatever its status; the largest error there.
+    work : of work_for, for as many lanes as `width` has.
     All from piece_t on are changed in place.
 
     Status is DONE, STEP_TOO_SMALL, NOT_FINITE, TOO_MANY_STEPS, NO_ROOM (for more pieces) or PIVOT_COLLAPSED.
@@ -86,41 +186,44 @@ def solve(
     lanes = len(width)
     hits = hit_numbers.shape[0]
     rows = code.stride * lanes
-    numbers = np.zeros(code.numbers * lanes + len(FLAT))
-    coefficients = np.zeros(code.coefficients * lanes)
-    vectors = np.zeros(code.vectors * lanes + len(FLAT))
-    x = np.zeros(rows)
-    x_new = np.zeros(rows)
-    k = np.zeros(STAGES * rows)
-    error = np.zeros(rows)
-    rate = np.zeros(rows)
-    per_pivot = np.zeros(rows)
-    row_size = np.zeros(rows)
-    arguments = np.zeros(code.exponentials * lanes + len(FLAT))
-    exp_slopes = np.zeros(code.exponentials * lanes + len(FLAT))
-    exp_values = np.zeros(code.exponentials * lanes + len(FLAT))
-    tanhs = np.zeros(code.tanhs * lanes + len(FLAT))
-    slopes = np.zeros(code.slopes * lanes)
-    second = np.zeros(code.inputs * lanes)
-    now_t = np.zeros(lanes)  # start of the lane's segment, and the inputs over it
-    now_v = np.zeros(code.inputs * lanes)
-    now_slope = np.zeros(code.inputs * lanes)
-    sines = np.zeros(3 * code.inputs * lanes)
-    dense = np.zeros(5 * probes.size * lanes)
-    t = np.zeros(lanes)
-    h = np.ones(lanes)
-    step = np.ones(lanes)
-    square = np.zeros(lanes)
-    factor = np.zeros(lanes)
-    growth = np.zeros(lanes)
-    hit_of = np.full(lanes, FREE)
-    segment = np.zeros(lanes, np.int64)
-    pieces = np.zeros(lanes, np.int64)
-    tried = np.zeros(lanes, np.int64)
-    rejected = np.zeros(lanes, np.int64)
-    streak = np.zeros(lanes, np.int64)  # rejections in a row
-    last_step = np.zeros(lanes)  # of the last accepted step, 0 after a break point
-    last_factor = np.zeros(lanes)
+    numbers = work.numbers
+    coefficients = work.coefficients
+    base = work.base
+    vectors = work.vectors
+    x = work.x
+    x_new = work.x_new
+    k = work.k
+    error = work.error
+    rate = work.rate
+    per_pivot = work.per_pivot
+    row_size = work.row_size
+    per_row_size = work.per_row_size
+    arguments = work.arguments
+    exp_slopes = work.exp_slopes
+    exp_values = work.exp_values
+    tanhs = work.tanhs
+    slopes = work.slopes
+    second = work.second
+    now_t = work.now_t
+    now_v = work.now_v
+    now_slope = work.now_slope
+    sines = work.sines
+    dense = work.dense
+    t = work.t
+    h = work.h
+    step = work.step
+    square = work.square
+    factor = work.factor
+    growth = work.growth
+    hit_of = work.hit_of
+    segment = work.segment
+    pieces = work.pieces
+    tried = work.tried
+    rejected = work.rejected
+    streak = work.streak
+    last_step = work.last_step
+    last_factor = work.last_factor
+    longest_step = work.longest_step
 
     next_hit = 0
     for lane in range(lanes):
@@ -146,6 +249,7 @@ def solve(
                     numbers[row * lanes + lane] = hit_numbers[hit, row]
                 for row in range(code.g):
                     coefficients[row * lanes + lane] = hit_numbers[hit, row]
+                spread_conductances(code, coefficients, base, lane, lanes)
                 for row in range(code.cu):
                     coefficients[(code.first_cu + row) * lanes + lane] = hit_numbers[hit, code.g + row]
                 for row in range(code.known - code.inputs):
@@ -164,6 +268,10 @@ def solve(
                 for m in range(code.inputs):
                     now_v[m * lanes + lane] = segment_v[hit, s, m]
                     now_slope[m * lanes + lane] = segment_slope[hit, s, m]
+                longest_step[lane] = np.inf
+                for m in range(code.inputs):
+                    if code.is_sine[m]:
+                        longest_step[lane] = min(longest_step[lane], _MOST_OF_A_PERIOD / hit_sines[hit, m, 1])
                 h[lane] = hit_h[hit]
                 if h[lane] == 0.0:
                     h[lane] = min(_FIRST_STEP_S, 1e-3 * (segment_end[hit, s] - t[lane]))
@@ -177,12 +285,12 @@ def solve(
 
         # the step each lane will try: to the break point if near, half the way if two steps reach it
         for lane in range(lanes):
-            step[lane] = h[lane]
             if hit_of[lane] >= 0:
+                step[lane] = min(h[lane], longest_step[lane])
                 left = segment_end[hit_of[lane], segment[lane]] - t[lane]
-                if h[lane] * 1.000001 >= left:
+                if step[lane] * 1.000001 >= left:
                     step[lane] = left
-                elif 2.0 * h[lane] > left:
+                elif 2.0 * step[lane] > left:
                     step[lane] = 0.5 * left
 
         step_s = load(step, 0, width)
@@ -218,8 +326,8 @@ def solve(
                 code, numbers, vectors, arguments, exp_slopes, exp_values, tanhs, slopes, stage == 0, width
             )
             if stage == 0:
-                assemble(code, coefficients, slopes, width)
-                store(growth, 0, factorise(code, coefficients, per_pivot, row_size, width))
+                assemble(code, coefficients, base, slopes, width)
+                store(growth, 0, factorise(code, coefficients, per_pivot, row_size, per_row_size, width))
                 time_derivative(code, coefficients, slopes, vectors, second, rate, width)
             residual(code, numbers, coefficients, vectors, rate, _D[stage] * step_s, width)
             back_substitute(code, coefficients, per_pivot, vectors, k, stage * code.stride, width)
@@ -235,10 +343,13 @@ def solve(
             size = pick_less(size_old, size_new, size_new, size_old)
             store(error, p, last / (tolerance[0] + tolerance[1] * size))
         total = spread(0.0, width)
-        for row in range(code.size):
+        other = spread(0.0, width)  # by turns into two sums, as in residual
+        for row in range(0, code.size, 2):
             e = load(error, row * lanes, width)
             total = total + e * e
-        total = total * (1.0 / code.size)
+            e = load(error, (row + 1) * lanes, width)
+            other = other + e * e
+        total = (total + other) * (1.0 / min(code.size, _MOVING))
         store(square, 0, total)
         bounded = pick_less(total, 1e-12, 1e-12, total)
         store(factor, 0, _SAFETY * exponential(logarithm(bounded) * (-0.5 / _ORDER)))

@@ -9,7 +9,7 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
-from kickrender.engine.compile import kernel
+from kickrender.engine.compile import allocating_kernel, kernel
 
 Floats = NDArray[np.float64]
 
@@ -46,7 +46,7 @@ def symmetric_sums(values: Floats, taps: Floats, sums: Floats) -> None:
                 )
 
 
-@kernel
+@allocating_kernel
 def halve(signal: Floats, taps: Floats, halved: Floats) -> None:
     """Every other value of the filtered signal: halved[i] belongs to signal[2 i + 2 m - 1].
 
@@ -68,7 +68,7 @@ def halve(signal: Floats, taps: Floats, halved: Floats) -> None:
     symmetric_sums(even, taps, halved)
 
 
-@kernel
+@allocating_kernel
 def double(signal: Floats, taps: Floats, doubled: Floats) -> None:
     """The signal at twice the rate: the samples themselves, and the values half way between them.
 

@@ -7,11 +7,12 @@ from collections.abc import Mapping
 import numpy as np
 
 from kickrender.circuit import ResolvedCircuit, ResolvedPart
-from kickrender.engine.equations import evaluate_devices, matrix_at, residual
+from kickrender.engine.equations import matrix_at
 from kickrender.engine.lanes import LONE, PADDING
 from kickrender.engine.plan import Plan
 from kickrender.engine.program import build_program
 from kickrender.engine.topology import Topology, numbers_of, stamp_all, topology_of
+from tests.engine.doors import evaluate_devices, residual
 
 
 def topology_with(part: ResolvedPart, temperature_k: float = 298.15) -> Topology:

@@ -139,7 +139,7 @@ def test_order_five_against_a_closed_form():
     gain, delay = 1 / np.hypot(1, omega * ohm * farad), np.arctan(omega * ohm * farad)
     decay = np.exp(-LENGTH_S / (ohm * farad))
     truth = gain * (np.sin(omega * LENGTH_S + phase - delay) - np.sin(phase - delay) * decay) + np.sin(phase) * decay
-    counts = [20, 28, 40, 57, 80]
+    counts = [40, 57, 80, 113, 160]
     chosen = rc(SINE, "1k", "1u")
     errors = [abs(fixed_steps(chosen, LENGTH_S, count).end["out"] - truth) for count in counts]
     assert 4.7 <= slope_of(counts, errors) <= 5.3, errors

@@ -8,12 +8,12 @@ import numpy as np
 import pytest
 
 from kickrender.engine import equations, solve, solve_each
-from kickrender.engine.compile import kernel
-from kickrender.engine.lanes import FLAT, LONE, store
+from kickrender.engine.lanes import FLAT, LONE
 from kickrender.engine.plan import SOUND_PIVOT, Plan, _typical_matrices, choose
 from kickrender.engine.program import build_program
 from kickrender.engine.solve import _prepare, _program, _run, _settle
 from tests.engine.circuits import RAILS, VOICES, circuit, ladder, lopsided, residual_db, resonator
+from tests.engine.doors import back_substitute, evaluate_devices, growth_of, residual
 
 solving = import_module("kickrender.engine.solve")  # the package's own name `solve` is the function
 
@@ -94,12 +94,6 @@ def test_a_singular_matrix_has_no_order(matrix):
         choose(matrix[None])
 
 
-@kernel
-def growth_of(code, coefficients, per_pivot, row_size, box):
-    store(box, 0, equations.factorise(code, coefficients, per_pivot, row_size, LONE))
-    return box[0]
-
-
 @pytest.mark.parametrize("name", [*VOICES, "ladder"])
 def test_the_kernels_elimination_is_numpys_solve(name):
     """assemble, factorise, residual and back_substitute on a state of the circuit, against numpy.linalg.solve."""
@@ -123,19 +117,19 @@ def test_the_kernels_elimination_is_numpys_solve(name):
     matrix = np.zeros((code.size, code.size))
     for entry, (row, column) in enumerate(program.pattern):
         matrix[row, column] = coefficients[code.first_w + entry]
-    per_pivot, row_size, rate, solution = (np.zeros(code.stride) for _ in range(4))
-    assert growth_of(code, coefficients, per_pivot, row_size, np.zeros(1)) < 1e8
+    per_pivot, row_size, per_row_size, rate, solution = np.zeros((5, code.stride))
+    assert growth_of(code, coefficients, per_pivot, row_size, per_row_size, np.zeros(1)) < 1e8
     arguments, exp_slopes, exp_values = np.zeros((3, code.exponentials + len(FLAT)))
     tanhs, slopes = np.zeros(code.tanhs + len(FLAT)), np.zeros(code.slopes)
     # right-hand side: f itself, once with the factors (forward substitution) and once without them
     evaluated = vectors.copy()
-    equations.evaluate_devices(code, numbers, evaluated, arguments, exp_slopes, exp_values, tanhs, slopes, False, LONE)
+    evaluate_devices(code, numbers, evaluated, arguments, exp_slopes, exp_values, tanhs, slopes, False, LONE)
     plain, unfactored = evaluated.copy(), coefficients.copy()
     unfactored[code.first_w :] = 0.0
-    equations.residual(code, numbers, unfactored, plain, rate, 0.0, LONE)
+    residual(code, numbers, unfactored, plain, rate, 0.0, LONE)
     right = plain[code.v_y : code.v_y + code.size]
-    equations.residual(code, numbers, coefficients, evaluated, rate, 0.0, LONE)
-    equations.back_substitute(code, coefficients, per_pivot, evaluated, solution, 0, LONE)
+    residual(code, numbers, coefficients, evaluated, rate, 0.0, LONE)
+    back_substitute(code, coefficients, per_pivot, evaluated, solution, 0, LONE)
     scale = np.abs(matrix).max(axis=1)
     true = np.linalg.solve(matrix / scale[:, None], right / scale)
     np.testing.assert_allclose(solution[: code.size], true, rtol=1e-8, atol=1e-12 * np.abs(true).max())
@@ -154,8 +148,8 @@ def test_a_pivot_of_nothing_is_seen_whatever_comes_after():
         for entry, place in enumerate(program.pattern):
             values = {(0, 0): pivot, (1, 0): below, (0, 1): 1e-3}
             coefficients[code.first_w + entry] = values.get(place, 2e-3 if place[0] == place[1] else -1e-3)
-        per_pivot, row_size = np.zeros((2, code.stride))
-        assert growth_of(code, coefficients, per_pivot, row_size, np.zeros(1)) > 1e200
+        per_pivot, row_size, per_row_size = np.zeros((3, code.stride))
+        assert growth_of(code, coefficients, per_pivot, row_size, per_row_size, np.zeros(1)) > 1e200
 
 
 @pytest.fixture

@@ -245,3 +245,12 @@ def test_rails_are_any_nets():
     )
     found = solve(chosen, 0.01).sample(1e3, 10)
     assert found[-1] == pytest.approx(6.0 - 1.5, abs=0.2)
+
+
+def test_a_sine_through_a_circuit_without_memory():
+    """Two resistors have no error to hold a step back; the output is half the sine all the same, at every sample."""
+    divider = {"R1": "resistor 1k in out", "R2": "resistor 1k out ground"}
+    chosen = circuit(divider, inputs={"in": 'sine = { amplitude = "3V", frequency = "330Hz", phase = "30deg" }'})
+    found = solve(chosen, 0.1).sample(48_000.0, 4800)
+    times = np.arange(4800) / 48_000.0
+    np.testing.assert_allclose(found, 1.5 * np.sin(2 * np.pi * 330.0 * times + np.pi / 6), atol=1e-6)

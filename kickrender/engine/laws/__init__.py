@@ -28,7 +28,8 @@ STAMPS = {
     "controlled-current": controlled.stamp_current,
 }
 
-LAWS = ("diode", "transistor", "opamp", "jfet", "zener", "ota")
+LAWS = ("diode", "transistor", "jfet", "zener", "ota", "opamp")
+SEPARATE = ("opamp",)  # its exponentials, limits that are seldom reached, start a block of their own
 
 
 @inner_kernel
@@ -38,7 +39,7 @@ def evaluate(spans, numbers, arguments, exp_slopes, exp_values, tanhs, vectors, 
     transistor.evaluate(
         spans[1], numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, with_slopes, width
     )
-    opamp.evaluate(spans[2], numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, with_slopes, width)
-    jfet.evaluate(spans[3], numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, with_slopes, width)
-    zener.evaluate(spans[4], numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, with_slopes, width)
-    ota.evaluate(spans[5], numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, with_slopes, width)
+    jfet.evaluate(spans[2], numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, with_slopes, width)
+    zener.evaluate(spans[3], numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, with_slopes, width)
+    ota.evaluate(spans[4], numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, with_slopes, width)
+    opamp.evaluate(spans[5], numbers, arguments, exp_slopes, exp_values, tanhs, vectors, slopes, with_slopes, width)

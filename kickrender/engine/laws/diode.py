@@ -2,7 +2,7 @@
 
 Source: W. Shockley, The theory of p-n junctions in semiconductors, Bell System Technical Journal 28 (1949), the
 ideal-diode law with ideality n. Breakdown, charge storage and the junction capacitance's change with voltage are
-left out.
+left out. g_min is a term of the law: as a conductance of its own it would cost four more entries everywhere.
 """
 
 from __future__ import annotations
@@ -23,7 +23,6 @@ def stamp(part: ResolvedPart, stamps: Stamps) -> None:
         inner = stamps.inner(part, "junction")
         stamps.conductance(anode, inner, 1.0 / model["series_resistance"], typical=1.0)
         anode = inner
-    stamps.conductance(anode, cathode, MINIMUM_CONDUCTANCE_S, typical=MINIMUM_CONDUCTANCE_S)
     if model.get("capacitance", 0.0) > 0.0:
         stamps.capacitance(anode, cathode, model["capacitance"], typical=1e-11)
     i_s = saturation_current(model, stamps.temperature_k)
@@ -41,11 +40,11 @@ def stamp(part: ResolvedPart, stamps: Stamps) -> None:
                 (cathode, anode, 0, -1.0),
                 (cathode, cathode, 0, 1.0),
             ),
-            parameters=2,
-            typical_slopes=((0.0,), (1e-6,), (1e-1,)),
+            parameters=4,
+            typical_slopes=((MINIMUM_CONDUCTANCE_S,), (1e-6,), (1e-1,)),
         ),
         exponentials=(inverse_scale, 0.0),
-        parameters=(i_s, i_s * inverse_scale),
+        parameters=(i_s, i_s * inverse_scale, MINIMUM_CONDUCTANCE_S / inverse_scale, MINIMUM_CONDUCTANCE_S),
     )
 
 
@@ -60,7 +59,10 @@ def evaluate(span, numbers, arguments, exp_slopes, exp_values, tanhs, vectors, s
     lanes = len(width)
     for k in range(span[0]):
         e = (span[1] + k) * lanes
-        p = (span[5] + 2 * k) * lanes
-        store(vectors, (span[3] + k) * lanes, load(numbers, p, width) * (load(exp_values, e, width) - 1.0))
+        p = (span[5] + 4 * k) * lanes
+        leak = load(numbers, p + 2 * lanes, width) * load(arguments, e, width)
+        i = load(numbers, p, width) * (load(exp_values, e, width) - 1.0)
+        store(vectors, (span[3] + k) * lanes, i + leak)
         if with_slopes:
-            store(slopes, (span[4] + k) * lanes, load(numbers, p + lanes, width) * load(exp_slopes, e, width))
+            g = load(numbers, p + lanes, width) * load(exp_slopes, e, width)
+            store(slopes, (span[4] + k) * lanes, g + load(numbers, p + 3 * lanes, width))

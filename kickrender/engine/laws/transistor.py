@@ -3,6 +3,8 @@
     I_F = I_s (exp(v_be/(n V_T)) - 1),  I_R = I_sr (exp(v_bc/(n V_T)) - 1)
     i_c = (I_F - I_R)(1 - v_bc/V_A) - I_R/b_R,  i_b = I_F/b_F + I_R/b_R
 
+and g_min from base to emitter and from base to collector, outside the Early factor.
+
 Source: J. J. Ebers and J. L. Moll, Large-signal behavior of junction transistors, Proceedings of the IRE 42 (1954),
 in transport form; J. M. Early, Proceedings of the IRE 40 (1952), to first order in v_bc. High-level injection,
 leakage terms, ohmic resistances and charge storage are left out. For a PNP every voltage and current is reversed.
@@ -23,7 +25,6 @@ def stamp(part: ResolvedPart, stamps: Stamps) -> None:
     model = part.model.values
     c, b, e = (part.terminals[role] for role in ("collector", "base", "emitter"))
     for net, key in ((e, "base_emitter_capacitance"), (c, "base_collector_capacitance")):
-        stamps.conductance(b, net, MINIMUM_CONDUCTANCE_S, typical=MINIMUM_CONDUCTANCE_S)
         if model.get(key, 0.0) > 0.0:
             stamps.capacitance(b, net, model[key], typical=1e-11)
     scale = model["ideality"] * thermal_voltage(stamps.temperature_k)
@@ -44,8 +45,12 @@ def stamp(part: ResolvedPart, stamps: Stamps) -> None:
                 for slope, other in zip(pair, (e, c), strict=True)
                 for column, direction in ((b, 1.0), (other, -1.0))
             ),
-            parameters=6,
-            typical_slopes=((0.0,) * 4, (1e-4, -1e-9, 1e-6, 0.0), (1e-1, -1e-3, 1e-3, 1e-3)),
+            parameters=8,
+            typical_slopes=(
+                (0.0, -MINIMUM_CONDUCTANCE_S, MINIMUM_CONDUCTANCE_S, MINIMUM_CONDUCTANCE_S),
+                (1e-4, -1e-9, 1e-6, 0.0),
+                (1e-1, -1e-3, 1e-3, 1e-3),
+            ),
         ),
         exponentials=(1.0 / scale, 0.0, 1.0 / scale, 0.0),
         parameters=(
@@ -55,6 +60,8 @@ def stamp(part: ResolvedPart, stamps: Stamps) -> None:
             1.0 / model["reverse_gain"],
             1.0 / scale,
             scale / v_early if v_early else 0.0,
+            scale * MINIMUM_CONDUCTANCE_S,
+            MINIMUM_CONDUCTANCE_S,
         ),
     )
 
@@ -66,7 +73,7 @@ def evaluate(span, numbers, arguments, exp_slopes, exp_values, tanhs, vectors, s
     for k in range(span[0]):
         f = (span[1] + 2 * k) * lanes
         r = f + lanes
-        p = (span[5] + 6 * k) * lanes
+        p = (span[5] + 8 * k) * lanes
         o = (span[3] + 2 * k) * lanes
         i_s = load(numbers, p, width)
         i_sr = load(numbers, p + lanes, width)
@@ -75,18 +82,21 @@ def evaluate(span, numbers, arguments, exp_slopes, exp_values, tanhs, vectors, s
         scale_per_early = load(numbers, p + 5 * lanes, width)
         i_f = i_s * (load(exp_values, f, width) - 1.0)
         i_r = i_sr * (load(exp_values, r, width) - 1.0)
-        early = 1.0 - load(arguments, r, width) * scale_per_early
+        x_r = load(arguments, r, width)
+        early = 1.0 - x_r * scale_per_early
+        leak = load(numbers, p + 6 * lanes, width)  # per unit of an argument
+        leak_r = leak * x_r
         transport = i_f - i_r
         i_r_base = i_r * per_reverse_gain
-        store(vectors, o, transport * early - i_r_base)
-        store(vectors, o + lanes, i_f * per_forward_gain + i_r_base)
+        store(vectors, o, (transport * early - i_r_base) - leak_r)
+        store(vectors, o + lanes, (i_f * per_forward_gain + i_r_base) + (leak * load(arguments, f, width) + leak_r))
         if with_slopes:
             g = (span[4] + 4 * k) * lanes
             per_scale = load(numbers, p + 4 * lanes, width)
             g_f = i_s * per_scale * load(exp_slopes, f, width)
             g_r = i_sr * per_scale * load(exp_slopes, r, width)
-            g_r_base = g_r * per_reverse_gain
+            g_r_base = g_r * per_reverse_gain + load(numbers, p + 7 * lanes, width)
             store(slopes, g, g_f * early)
             store(slopes, g + lanes, 0.0 - g_r * early - transport * (scale_per_early * per_scale) - g_r_base)
-            store(slopes, g + 2 * lanes, g_f * per_forward_gain)
+            store(slopes, g + 2 * lanes, g_f * per_forward_gain + load(numbers, p + 7 * lanes, width))
             store(slopes, g + 3 * lanes, g_r_base)
