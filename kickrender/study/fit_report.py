@@ -13,7 +13,10 @@ from kickrender.engine import ENGINE_VERSION
 from kickrender.errors import WriteError
 from kickrender.sound.files import write_whole
 from kickrender.sound.goals import GOALS
+from kickrender.sound.options import SoundOptions
+from kickrender.sound.render import Take, hear_each
 from kickrender.sound.sidecar import json_bytes
+from kickrender.study import pictures
 from kickrender.study.aspects import ASPECTS
 from kickrender.study.files import open_folder, write_table
 from kickrender.study.fit import Fit
@@ -69,7 +72,7 @@ def codes(found: Fit, values: Mapping[str, float]) -> dict[str, str]:
 
 
 def write_fit(found: Fit, folder: Path) -> list[str]:
-    """Write JSON, table and the best combination as a circuit file into a folder; returns their names.
+    """Write JSON, table, a picture, and the best combination as a circuit file into a folder; returns their names.
 
     Raises
     ------
@@ -99,8 +102,20 @@ def write_fit(found: Fit, folder: Path) -> list[str]:
         for rank, each in enumerate(found.best, 1)
     ]
     write_table(rows, folder / CSV_NAME)
+    names = pictures.save_figure("fit", folder, lambda figure: _draw(figure, found), width=11.0, height=7.5)
     write_whole(folder / JSON_NAME, json_bytes(fit_facts(found)))
-    return [circuit_name, CSV_NAME, JSON_NAME]
+    return [circuit_name, CSV_NAME, *names, JSON_NAME]
+
+
+def _draw(figure: Any, found: Fit) -> None:
+    """The circuit before and with the best combination, in four panels."""
+    options = SoundOptions()
+    hits = [(found.circuit, dict(found.settings)), (found.circuit, {**found.settings, **found.best[0].values})]
+    takes = zip(("before", "fitted"), hear_each(hits, options, measured=False), strict=True)
+    sounds = [(label, take.samples) for label, take in takes if isinstance(take, Take)]
+    panels = pictures.waveforms, pictures.pitch_tracks, pictures.decays, pictures.spectra
+    for axes, draw in zip(figure.subplots(2, 2).flat, panels, strict=True):
+        draw(axes, sounds, options.rate_hz)
 
 
 def _word(unit: str) -> str:

@@ -21,7 +21,7 @@ def circuits(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
 def test_combinations_are_printed_and_the_best_renders(run: Run) -> None:
     ran = run("study", "fit", "bell.toml", "--goal", "pitch=272Hz", "--goal", "decay=0.11s", "--vary", "R_bridge,R_leg",
               "--series", "resistor=E12", "--count", "3", "--out", "fits")  # fmt: skip
-    assert (ran.code, ran.err) == (0, "fits: bell-fit.toml, fit.csv, fit.json\n")
+    assert (ran.code, ran.err) == (0, "fits: bell-fit.toml, fit.csv, fit.png, fit.svg, fit.json\n")
     lines = [" ".join(line.split()) for line in ran.out.splitlines()]
     assert lines[0].startswith("Bare bridged-T: pitch 272 Hz, decay 0.11 s; ")
     assert "R_bridge R_leg pitch, Hz cents decay, s % off drop, semitones loudness, LUFS" in lines

@@ -79,6 +79,7 @@ def test_the_best_is_written_as_a_circuit_that_sounds_so(found: Fit, tmp_path: P
     rows = list(csv.DictReader((tmp_path / "out" / "fit.csv").read_text().splitlines()))
     assert float(rows[0]["R_bridge"]) == found.best[0].values["R_bridge"]
     assert float(rows[0]["decay_missed_percent"]) == found.best[0].misses["decay"]
+    assert (tmp_path / "out" / "fit.png").read_bytes()[:8] == b"\x89PNG\r\n\x1a\n"
     write_fit(found, tmp_path / "out")  # its own files may be replaced
 
 
