@@ -235,3 +235,19 @@ def matrix_at(code, numbers, coefficients, vectors, time_s, segment_t, segment_v
     spread_conductances(code, coefficients, base, 0, 1)
     assemble(code, coefficients, base, slopes, width)
     return slopes
+
+
+@allocating_kernel
+def outputs_at(code, numbers, states, width):
+    """Outputs of all devices at the voltages of many states, in place.
+
+    numbers : (code.numbers rows and padding,). states : (count, code.vectors rows), each as `vectors` elsewhere.
+    """
+    lanes = len(width)
+    arguments = np.zeros(code.exponentials * lanes)
+    exp_slopes = np.zeros(code.exponentials * lanes)
+    exp_values = np.zeros(code.exponentials * lanes)
+    tanhs = np.zeros(code.tanhs * lanes + len(FLAT))
+    slopes = np.zeros(code.slopes * lanes)
+    for k in range(states.shape[0]):
+        evaluate_devices(code, numbers, states[k], arguments, exp_slopes, exp_values, tanhs, slopes, False, width)

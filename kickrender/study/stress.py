@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 
 from kickrender.circuit.records import GROUND, ResolvedCircuit, Sine, Wave
 from kickrender.engine import Solution, rest_state, solve_each
-from kickrender.engine.equations import evaluate_devices
+from kickrender.engine.equations import outputs_at
 from kickrender.engine.lanes import FLAT, PADDING
 from kickrender.engine.plan import Plan
 from kickrender.engine.program import build_program
@@ -181,10 +181,7 @@ def _device_outputs(circuit: ResolvedCircuit, stamps: Sequence[Stamps], motion: 
             vectors[:, row, :] = padded.reshape(-1, lanes)
     layout = program.layout(numbers_of(circuit, topology, stamps))
     numbers = np.repeat(np.append(layout, np.zeros(PADDING)), lanes)
-    exponentials = np.zeros((3, (code.exponentials + len(FLAT)) * lanes))
-    tanhs, slopes = np.zeros((code.tanhs + len(FLAT)) * lanes), np.zeros(code.slopes * lanes)
-    for some in vectors:
-        evaluate_devices(code, numbers, some.ravel(), *exponentials, tanhs, slopes, False, SIDE_BY_SIDE)
+    outputs_at(code, numbers, vectors.reshape(len(vectors), -1), SIDE_BY_SIDE)
     by_device: dict[int, Floats] = {}
     first = code.v_outputs
     for index, device in zip(topology.device_order, topology.devices, strict=True):
