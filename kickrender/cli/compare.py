@@ -16,6 +16,7 @@ _SHOWN = {
     "start_hz": "start pitch, Hz",
     "decay_s": "decay to -60 dB, s",
     "attack_s": "attack, s",
+    "drop_s": "time of the drop, s",
     "centroid_hz": "centroid, Hz",
     "true_peak_dbtp": "true peak, dBTP",
     "integrated_lufs": "integrated, LUFS",

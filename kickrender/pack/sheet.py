@@ -38,6 +38,7 @@ MEASURES: Mapping[str, Measure] = {
     "start_hz": Measure("start of the drop", "Hz", 1),
     "cents": Measure("off the note", "cent", 1),
     "attack_s": Measure("attack", "ms", 2, 1e3),
+    "drop_s": Measure("time of the drop", "ms", 1, 1e3),
     "length_s": Measure("length", "s", 3),
     "integrated_lufs": Measure("gated loudness", "LUFS", 2),
     "true_peak_dbtp": Measure("true peak", "dBTP", 2),

@@ -1,9 +1,10 @@
 """What may be asked of a sound by ear, note names, and how near a measured sound comes.
 
-    pitch     settled fundamental, a note or a frequency    within 2 cents
-    decay     time from the peak to -60 dB                  within 3 %
-    drop      pitch at the start over the settled one       within a quarter of a semitone
-    centroid  mean frequency of the power spectrum          within 3 %
+    pitch      settled fundamental, a note or a frequency    within 2 cents
+    decay      time from the peak to -60 dB                  within 3 %
+    drop       pitch at the start over the settled one       within a quarter of a semitone
+    drop_time  until 1/e of the drop is left                 within 10 %
+    centroid   mean frequency of the power spectrum          within 3 %
 
 A circuit's table [goals] names the control that answers to each; `kickrender.sound.tune` finds its position.
 """
@@ -112,6 +113,14 @@ GOALS: Mapping[str, GoalKind] = MappingProxyType(
             _drop,
             _itself,
             0.25,
+        ),
+        "drop_time": GoalKind(
+            "until 1/e of the drop is left",
+            "s",
+            {"seconds": Quantity("s", "drop time", at_least=0.001, at_most=10.0)},
+            lambda measurements: measurements.drop_s,
+            exact.log,
+            0.0953,  # exp of it is 1.1; read from half cycles, a drop's time is no finer than that
         ),
         "centroid": GoalKind(
             "mean frequency",

@@ -42,6 +42,7 @@ class Measurements:
         the sound lies. [cent, 0.01]
     decay_s : from the peak to 60 dB below it. [s, 1 us]
     attack_s : from 10 % to 90 % of the peak. [s, 1 us]
+    drop_s : from the start of the drop until 1/e of it is left, in semitones; None below a semitone. [s, 1 us]
     centroid_hz : mean frequency of the power spectrum. [Hz, 7 digits]
     length_s : [s]
     offset : mean of the last 100 ms, weighted by a raised cosine; full scale 1. [1e-9]
@@ -57,6 +58,7 @@ class Measurements:
     cents: float | None = None
     decay_s: float | None = None
     attack_s: float | None = None
+    drop_s: float | None = None
     centroid_hz: float | None = None
     length_s: float
     offset: float
@@ -98,7 +100,7 @@ def measure(
         return only is None or not set(names).isdisjoint(only)
 
     heard = loudness(samples, rate_hz) if asked("momentary_lufs", "integrated_lufs") else None
-    tone = pitch(samples, rate_hz) if asked("start_hz", "settled_hz", "note", "cents") else None
+    tone = pitch(samples, rate_hz) if asked("start_hz", "settled_hz", "note", "cents", "drop_s") else None
     settled = None if tone is None or tone.settled_hz is None else significant(tone.settled_hz)
     note, cents = (None, None) if settled is None else nearest_note(settled, concert_pitch_hz)
     return Measurements(
@@ -112,6 +114,7 @@ def measure(
         cents=cents,
         decay_s=_maybe(decay_s(samples, rate_hz), SECOND_DIGITS) if asked("decay_s") else None,
         attack_s=_rounded(attack_s(samples, rate_hz), SECOND_DIGITS) if asked("attack_s") else None,
+        drop_s=None if tone is None else _maybe(tone.drop_s, SECOND_DIGITS),
         centroid_hz=significant(centroid_hz(samples, rate_hz)) if asked("centroid_hz") else None,
         length_s=length,
         offset=_rounded(offset(samples, rate_hz), OFFSET_DIGITS),

@@ -1,4 +1,4 @@
-"""Pitch of a struck sound over time, where it starts, and where it settles.
+"""Pitch of a struck sound over time, where it starts, how long it falls, and where it settles.
 
 A kick has few cycles, its pitch falls by octaves within the first of them, and its wave may be bent or flattened.
 So time is cut at zero crossings, which clipping does not move, and only half cycles of one polarity are compared with
@@ -29,18 +29,21 @@ START_WITHIN_S = 0.010  # half cycles that begin this soon after the onset may h
 
 FLOOR_DB = -50.0  # below the largest swing nothing is read
 GAP = 1e-6  # of the loudest window: silence between two strikes
+DROP_LEFT = math.exp(-1.0)  # of the drop, in semitones, when it counts as done: an exponential's time constant
+LEAST_DROP = 2.0 ** (1.0 / 12.0)  # start over settled pitch; less is no drop whose time could be told
 SETTLED_SPREAD = 0.003  # a pitch this far from the settled one, as a ratio, counts a quarter
 SETTLING_ROUNDS = 4  # each round moves several times closer
 
 
 @dataclass(frozen=True)
 class Pitch:
-    """times_s, hz : pitch over time, one reading per half cycle. start_hz, settled_hz : None when there is none."""
+    """times_s, hz : pitch over time, a reading per half cycle; start_hz, settled_hz, drop_s : None if there is none."""
 
     times_s: Floats
     hz: Floats
     start_hz: float | None
     settled_hz: float | None
+    drop_s: float | None = None
 
 
 def pitch(samples: Floats, rate_hz: float) -> Pitch:
@@ -59,7 +62,8 @@ def pitch(samples: Floats, rate_hz: float) -> Pitch:
         Track: the reciprocal of a full period about each half cycle, its own length plus the geometric mean of its
         neighbours'. Start: the highest reading among half cycles that begin within 10 ms of the onset (else the
         first); the half cycle in which the strike still drives the sound is not read. Settled: the mean frequency of
-        the fundamental where it stays about one value, weighted by amplitude, for all that lies above -50 dB.
+        the fundamental where it stays about one value, weighted by amplitude, for all that lies above -50 dB. Drop:
+        from the start's reading until 1/e of the way to the settled pitch is left, in semitones, between readings.
 
     Source: common practice, no source.
     """
@@ -84,7 +88,21 @@ def pitch(samples: Floats, rate_hz: float) -> Pitch:
     early = crossings[1:end] <= onset + START_WITHIN_S * rate
     start = float(hz[early].max()) if early.any() else float(hz[0])
     settled = _settled(smooth[::2].copy(), rate / 2, crossings[1] / 2, crossings[end] / 2, float(np.median(hz[-4:])))
-    return Pitch(times, hz, start, settled)
+    return Pitch(times, hz, start, settled, _drop_s(times, hz, start, settled))
+
+
+def _drop_s(times: Floats, hz: Floats, start: float, settled: float) -> float | None:
+    """How long the pitch falls until so little of its drop is left that it counts as done; None without a drop. [s]"""
+    if start < LEAST_DROP * settled:
+        return None
+    left = np.log(hz / settled) / math.log(start / settled)
+    first = int(np.argmax(hz == start))  # readings before it still rise
+    done = np.flatnonzero(left[first:] <= DROP_LEFT)
+    if len(done) == 0:
+        return None
+    k = first + int(done[0])
+    share = (left[k - 1] - DROP_LEFT) / (left[k - 1] - left[k])
+    return float(times[k - 1] + share * (times[k] - times[k - 1]) - times[first])
 
 
 def _smoothed(samples: Floats, factor: int, rate_hz: float) -> Floats:

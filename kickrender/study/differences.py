@@ -25,6 +25,7 @@ _KINDS: Mapping[str, tuple[str, str]] = {
     "settled_hz": ("cents", "cents"),
     "decay_s": ("milliseconds", "ms"),
     "attack_s": ("milliseconds", "ms"),
+    "drop_s": ("milliseconds", "ms"),
     "length_s": ("milliseconds", "ms"),
     "peak_dbfs": ("plain", "dB"),
     "true_peak_dbtp": ("plain", "dB"),

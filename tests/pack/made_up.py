@@ -63,7 +63,7 @@ def make_measurements(hz: float, **more: Any) -> dict[str, Any]:
     """What might be measured of a hit, without one."""
     flat = {"peak_dbfs": -1.0, "true_peak_dbtp": -1.0, "momentary_lufs": -20.0, "integrated_lufs": -20.0, "offset": 0.0}
     pitch = {"start_hz": 2 * hz, "settled_hz": hz, "note": "C2", "cents": 0.0, "centroid_hz": 99.0}
-    return {**flat, **pitch, "decay_s": 0.3, "attack_s": 0.001, "length_s": 0.5, **more}
+    return {**flat, **pitch, "decay_s": 0.3, "attack_s": 0.001, "drop_s": 0.02, "length_s": 0.5, **more}
 
 
 def make_pack(folder: Path, title: str = "Made up", **more: Any) -> dict[str, Any]:

@@ -90,8 +90,8 @@ def test_a_blocks_own_take_the_place_of_the_files(folder: Path) -> None:
     [
         ('pitch = { notes = ["F1", "H1"] }', "axes.pitch: no note 'H1'; allowed: a note such as 'F1', 'F#1' or 'Bb1'; "
                                              "did you mean 'G1'?"),
-        ("pich = { hertz = [50] }", "axes.pich: no goal 'pich'; allowed: pitch, decay, drop, centroid; did you mean "
-                                    "'pitch'?"),
+        ("pich = { hertz = [50] }", "axes.pich: no goal 'pich'; allowed: pitch, decay, drop, "
+                                    "drop_time, centroid; did you mean 'pitch'?"),
         ("pitch = { seconds = [50] }", "axes.pitch.seconds: unknown key 'seconds'; allowed: notes, hertz"),
         ("pitch = { notes = ['F1'], hertz = [50] }", "axes.pitch: 2 keys; allowed: one of notes, hertz"),
         ("pitch = { hertz = 50 }", "axes.pitch.hertz: 50; allowed: a list, or { from, to }"),

@@ -123,7 +123,7 @@ def test_what_is_not_asked_for_is_left_out(names):
     """What is asked for has the value of a full measurement; what costs time and is not asked for is None."""
     whole, some = asdict(measure(kick(), RATE_HZ)), asdict(measure(kick(), RATE_HZ, only=names))
     together = [
-        {"start_hz", "settled_hz", "note", "cents"},
+        {"start_hz", "settled_hz", "note", "cents", "drop_s"},
         {"momentary_lufs", "integrated_lufs"},
         {"true_peak_dbtp"},
         {"decay_s"},

@@ -183,3 +183,22 @@ def test_correlation_equals_numpy():
     sums = np.empty(17)
     correlate(samples, shape, 5, sums)
     np.testing.assert_allclose(sums, [samples[5 * w : 5 * w + 20] @ shape for w in range(17)], rtol=0, atol=1e-12)
+
+
+@pytest.mark.parametrize("hz", [41.2, 55.0, 69.9])
+@pytest.mark.parametrize("drop_s", [0.015, 0.03, 0.06])
+@pytest.mark.parametrize("semitones", [7.0, 24.0])
+def test_how_long_a_drop_takes(hz, drop_s, semitones):
+    """A drop exponential in semitones has left 1/e of itself after its time constant, wherever one starts to look.
+
+    Within a third of a half cycle, which is how far readings lie apart.
+    """
+    t = times()
+    cycles = np.cumsum(hz * 2 ** (semitones / 12 * np.exp(-t / drop_s))) / RATE_HZ
+    found = pitch(np.exp(-t / 0.2) * np.sin(2 * np.pi * cycles), RATE_HZ).drop_s
+    assert found == pytest.approx(drop_s, abs=0.34 / (2 * hz))
+
+
+def test_a_pitch_that_stays_has_no_drop():
+    t = times()
+    assert pitch(np.exp(-t / 0.2) * np.sin(2 * np.pi * 50 * t), RATE_HZ).drop_s is None

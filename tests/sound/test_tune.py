@@ -171,6 +171,13 @@ def test_goals_that_interact_are_met_together(name: str) -> None:
     )
 
 
+@pytest.mark.parametrize("name", ["bridged-t", "one-transistor"])
+def test_the_time_of_a_drop_is_met(name: str) -> None:
+    voice = read_circuit(name)
+    wishes = [wish(voice, drop_time=("seconds", s), pitch=("notes", "G1")) for s in (0.02, 0.04)]
+    assert_met(wishes, SoundOptions())
+
+
 def test_out_of_reach_is_told_with_the_range_within_reach(bell: Circuit) -> None:
     with pytest.raises(InputError) as caught:
         tune_each([wish(bell, {"damp": 50}, pitch=("notes", "C5")), wish(bell, pitch=("notes", "C2"))], OPTIONS)
