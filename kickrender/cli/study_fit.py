@@ -21,7 +21,11 @@ if TYPE_CHECKING:
 @click.command()
 @click.argument("circuit")
 @click.option(
-    "--goal", "goals", metavar="NAME=VALUE", multiple=True, help="What to meet: pitch, decay, drop, centroid."
+    "--goal",
+    "goals",
+    metavar="NAME=VALUE",
+    multiple=True,
+    help="What to meet: pitch, decay, drop, drop_time, centroid.",
 )
 @click.option(
     "--vary", metavar="PARTS", multiple=True, help="Parts to change, with commas.  [default: those that matter]"

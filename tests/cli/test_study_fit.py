@@ -43,7 +43,7 @@ def test_json_holds_all_of_it(run: Run) -> None:
 @pytest.mark.parametrize(
     ("arguments", "code", "message"),
     [
-        ("bell.toml", 2, "--goal: no goal; allowed: NAME=VALUE, of pitch, decay, drop, centroid"),
+        ("bell.toml", 2, "--goal: no goal; allowed: NAME=VALUE, of pitch, decay, drop, drop_time, centroid"),
         ("bell.toml --goal loud=3", 2, "nothing called 'loud' can be a goal"),
         ("bell.toml --goal pitch=300Hz --vary R_leeg", 2, "--vary: no part 'R_leeg'; allowed: R_bridge, R_leg, C_left, "
                                                           "C_right; did you mean 'R_leg'?"),

@@ -171,9 +171,9 @@ def test_goals_are_read_with_their_units(text: str, kind: str, value: float) -> 
 @pytest.mark.parametrize(
     ("texts", "message"),
     [
-        ([], "--goal: no goal; allowed: NAME=VALUE, of pitch, decay, drop, centroid"),
+        ([], "--goal: no goal; allowed: NAME=VALUE, of pitch, decay, drop, drop_time, centroid"),
         (["pitch"], "--goal: 'pitch'; allowed: NAME=VALUE"),
-        (["loudness=3"], "nothing called 'loudness' can be a goal; allowed: pitch, decay, drop, centroid"),
+        (["loudness=3"], "nothing called 'loudness' can be a goal; allowed: pitch, decay, drop, drop_time, centroid"),
         (["pich=50Hz"], "did you mean 'pitch'?"),
         (["pitch=50Hz", "pitch=60Hz"], "a second goal for pitch"),
         (["pitch=5Hz"], "--goal pitch: '5Hz' is out of range; allowed: 20Hz to 600Hz"),
