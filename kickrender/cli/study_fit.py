@@ -108,7 +108,7 @@ def _print(found: Fit) -> None:
     kinds = [goal.kind for goal in found.goals]
 
     def row(title: str, each: Combination) -> tuple[str, ...]:
-        told = [(f"{each.measured[kind]:.5g}", f"{each.misses[kind]:+.3g}") for kind in kinds]
+        told = [(f"{each.measured[kind]:.5g}", f"{round(each.misses[kind], 3) + 0.0:+.3g}") for kind in kinds]
         besides = ["-" if value is None else f"{round(value, 4) + 0.0:.4g}" for value in each.besides.values()]
         cells = [cell for pair in told for cell in pair]
         return title, *codes(found, each.values).values(), *cells, f"{each.off:.2g}", *besides
