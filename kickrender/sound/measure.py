@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 from kickrender.errors import MeasurementError
 from kickrender.sound.envelope import attack_s, decay_s
 from kickrender.sound.loudness import loudness
-from kickrender.sound.pitch import Pitch, pitch
+from kickrender.sound.pitch import pitch, track
 from kickrender.sound.true_peak import true_peak
 
 Floats = NDArray[np.float64]
@@ -123,8 +123,7 @@ def measure(
 
 def pitch_track(samples: Floats, rate_hz: float) -> tuple[Floats, Floats]:
     """Pitch over time: (times_s, hz), one reading per half cycle; empty when there is none. See `pitch`."""
-    track: Pitch = pitch(checked_samples(samples), rate_hz)
-    return track.times_s, track.hz
+    return track(checked_samples(samples), rate_hz)
 
 
 def checked_samples(samples: Floats) -> Floats:

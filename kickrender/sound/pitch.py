@@ -67,7 +67,41 @@ def pitch(samples: Floats, rate_hz: float) -> Pitch:
 
     Source: common practice, no source.
     """
-    from kickrender.sound.compiled import first_reaching, half_cycles  # loads the compiler
+    from kickrender.sound.compiled import first_reaching  # loads the compiler
+
+    cut = _cut(samples, rate_hz)
+    if cut is None:
+        return Pitch(np.empty(0), np.empty(0), None, None)
+    onset = first_reaching(cut.smooth, ONSET * cut.peak)
+    early = cut.crossings[1:-1] <= onset + START_WITHIN_S * cut.rate_hz
+    start = float(cut.hz[early].max()) if early.any() else float(cut.hz[0])
+    ends = cut.crossings[1] / 2, cut.crossings[-1] / 2
+    settled = _settled(cut.smooth[::2].copy(), cut.rate_hz / 2, *ends, float(np.median(cut.hz[-4:])))
+    return Pitch(cut.times_s, cut.hz, start, settled, _drop_s(cut.times_s, cut.hz, start, settled))
+
+
+def track(samples: Floats, rate_hz: float) -> tuple[Floats, Floats]:
+    """The track of `pitch` without what reading the settled pitch costs: (times_s, hz), empty when there is none."""
+    cut = _cut(samples, rate_hz)
+    return (np.empty(0), np.empty(0)) if cut is None else (cut.times_s, cut.hz)
+
+
+@dataclass(frozen=True)
+class _Cut:
+    """A sound cut into half cycles: the smoothed sound, its rate and largest swing, crossings in its samples from the
+    strike's to the last one read, and the track's readings between them."""
+
+    smooth: Floats
+    rate_hz: float
+    peak: float
+    crossings: Floats
+    times_s: Floats
+    hz: Floats
+
+
+def _cut(samples: Floats, rate_hz: float) -> _Cut | None:
+    """Half cycles and their readings; None when there are too few."""
+    from kickrender.sound.compiled import half_cycles
 
     factor = max(1, round(rate_hz / ANALYSIS_RATE_HZ))
     smooth = _smoothed(samples, factor, rate_hz)
@@ -75,20 +109,16 @@ def pitch(samples: Floats, rate_hz: float) -> Pitch:
     delay_s = (factor - 1) / 2 / rate_hz  # an average belongs to the middle of its samples
     crossings, peaks, places = (np.empty(len(smooth)) for _ in range(3))
     count = half_cycles(smooth, LEAST_SWING, crossings, peaks, places)
-    crossings, peaks = crossings[:count], peaks[:count]
-    loud = np.flatnonzero(peaks >= peaks.max(initial=0.0) * 10 ** (FLOOR_DB / 20))
+    peak = float(peaks[:count].max(initial=0.0))
+    loud = np.flatnonzero(peaks[:count] >= peak * 10 ** (FLOOR_DB / 20))
     # The last half cycle is cut off, the first driven; crossings[1] to crossings[end] bound whole ones.
     end = min(count - 1, int(loud[-1]) + 1) if count else 0
-    lengths = np.diff(crossings[1 : end + 1]) / rate
+    crossings = crossings[: end + 1]
+    lengths = np.diff(crossings[1:]) / rate
     if len(lengths) < 3:
-        return Pitch(np.empty(0), np.empty(0), None, None)
-    hz = _readings(lengths)
-    times = (crossings[1:end] + crossings[2 : end + 1]) / 2 / rate + delay_s
-    onset = first_reaching(smooth, ONSET * peaks.max())
-    early = crossings[1:end] <= onset + START_WITHIN_S * rate
-    start = float(hz[early].max()) if early.any() else float(hz[0])
-    settled = _settled(smooth[::2].copy(), rate / 2, crossings[1] / 2, crossings[end] / 2, float(np.median(hz[-4:])))
-    return Pitch(times, hz, start, settled, _drop_s(times, hz, start, settled))
+        return None
+    times = (crossings[1:-1] + crossings[2:]) / 2 / rate + delay_s
+    return _Cut(smooth, rate, peak, crossings, times, _readings(lengths))
 
 
 def _drop_s(times: Floats, hz: Floats, start: float, settled: float) -> float | None:
