@@ -52,7 +52,7 @@ class StudyFailed(KickrenderError):
     "limits",
     metavar="NAME=LOW..HIGH",
     multiple=True,
-    help="What a build has to keep: pitch, start, drop, decay, loudness, peak, attack or centroid, with its unit.",
+    help="What a build has to keep: pitch, start, drop, decay, loudness, peak, drop_time, attack or centroid.",
 )
 @click.option("--out", type=click.Path(path_type=Path), metavar="DIR", help="Folder for table, histograms and JSON.")
 @click.option("--jobs", metavar="N", help="Worker processes.  [default: one per core]")

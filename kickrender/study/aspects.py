@@ -73,6 +73,9 @@ ASPECTS: Mapping[str, Aspect] = MappingProxyType(
         "peak": Aspect(
             "true peak", "dBTP", ("true_peak_dbtp",), lambda m: m.true_peak_dbtp, "dB", _difference, {"dBTP": 1.0}
         ),
+        "drop_time": Aspect(
+            "until 1/e of the drop is left", "s", ("drop_s",), lambda m: m.drop_s, "ms", _milliseconds, _SECONDS
+        ),
         "attack": Aspect("attack", "s", ("attack_s",), lambda m: m.attack_s, "ms", _milliseconds, _SECONDS),
         "centroid": Aspect("centroid", "Hz", ("centroid_hz",), lambda m: m.centroid_hz, "cents", cents, _HERTZ),
     }
