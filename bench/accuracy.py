@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+import time
 from collections.abc import Callable
 from dataclasses import dataclass
 from statistics import median
@@ -14,12 +15,13 @@ from bench.solvers import OverTime, Run, time_limit
 WANTED_DB = -100.0
 LOOSEST, TIGHTEST = 1e-4, 1e-11  # relative tolerances of the sweep; ratio 10, then one step back by the square root
 SLACK_DB = 0.5  # allowed to a solver's own dense output, whose tolerance was chosen by its joined steps
-QUICK_S = 2.0  # runs that take less are repeated
+REPEAT_S = 0.5  # a run is repeated as often as fits into this
 
 
 @dataclass(frozen=True)
 class Match:
-    """seconds, error_db : at `tolerance`; None when no run ended in time. over_s : the limit it ran into, if any."""
+    """seconds, error_db : at `tolerance`; None when no run ended in time. over_s : the limit at which the sweep was
+    stopped, if it was."""
 
     seconds: float | None
     error_db: float | None
@@ -53,13 +55,14 @@ def matched(
     Parameters
     ----------
     run : function (tolerance) -> Run
-    limit_s : no run may take longer. [s]
+    limit_s : for the whole sweep, at whose end it is stopped. [s]
     repeats : runs of which the median is taken, where one is quick.
     """
+    end = time.perf_counter() + limit_s
     best = Match(None, None, None)
     tolerance = loosest
     while tolerance >= tightest * 0.99:
-        found = _once(run, tolerance, converged, limit_s)
+        found = _once(run, tolerance, converged, limit_s, end)
         if found.seconds is None:
             best = Match(best.seconds, best.error_db, best.tolerance, best.steps, found.over_s, found.failure)
             break
@@ -67,20 +70,21 @@ def matched(
             best = found
         if found.reached:
             if tolerance < loosest:
-                between = _once(run, tolerance * math.sqrt(10.0), converged, limit_s)
+                between = _once(run, tolerance * math.sqrt(10.0), converged, limit_s, end)
                 best = between if between.reached else found
             break
         tolerance /= 10.0
-    if best.seconds is None or best.seconds > QUICK_S or repeats < 2:
+    repeats = 0 if best.seconds is None else min(repeats, int(REPEAT_S / best.seconds))
+    if repeats < 2:
         return best
     assert best.tolerance is not None
     times = [run(best.tolerance).seconds for _ in range(repeats)]
     return Match(median(times), best.error_db, best.tolerance, best.steps, best.over_s, best.failure)
 
 
-def _once(run: Callable[[float], Run], tolerance: float, converged: np.ndarray, limit_s: float) -> Match:
+def _once(run: Callable[[float], Run], tolerance: float, converged: np.ndarray, limit_s: float, end: float) -> Match:
     try:
-        with time_limit(limit_s):
+        with time_limit(max(1e-3, end - time.perf_counter())):
             done = run(tolerance)
     except OverTime:
         return Match(None, None, tolerance, over_s=limit_s)

@@ -15,24 +15,29 @@ import tempfile
 import threading
 import time
 from collections.abc import Callable
-from dataclasses import dataclass, field
+from dataclasses import asdict, dataclass, field
 from pathlib import Path
 from typing import Any
 
 TOP = Path(__file__).resolve().parent.parent
-SHORT_S = 0.1
+HIT_S = 0.5
 LOOK_EVERY_S = 0.05
 STAGES = ("solve", "decimate", "measure", "level and finish", "write", "manifest", "sheets")
 
 
 @dataclass(frozen=True)
 class PackRun:
-    """seconds : from plan to manifest, without Python's start. peak_mb : of the largest process that renders."""
+    """seconds : from plan to manifest, without Python's start.
+
+    worker_mb : the most memory that any worker ever held; None where the one process did it all. [MB]
+    parent_mb : the most that the process held which gives out the work and writes manifest and sheets. [MB]
+    """
 
     hits: int
     jobs: int
     seconds: float
-    peak_mb: float
+    worker_mb: float | None
+    parent_mb: float
     stages: dict[str, float] = field(default_factory=dict)
 
 
@@ -41,21 +46,21 @@ def render_shipped(name: str, jobs: int, *, stages: bool = False) -> PackRun:
     return _render(name, jobs, stages)
 
 
-def render_short_hits(circuit: str, hits: int, jobs: int) -> PackRun:
-    """That many hits of 100 ms, no two alike."""
+def render_hits(circuit: str, hits: int, jobs: int) -> PackRun:
+    """That many hits of half a second, no two alike."""
     with tempfile.TemporaryDirectory() as folder:
-        pack = Path(folder) / "short.toml"
-        pack.write_text(short_hits_text(circuit, hits))
+        pack = Path(folder) / "hits.toml"
+        pack.write_text(hits_text(circuit, hits))
         return _render(str(pack), jobs, False)
 
 
-def short_hits_text(circuit: str, hits: int) -> str:
+def hits_text(circuit: str, hits: int) -> str:
     """A pack file: a grid over pitch and decay."""
     rows = max(count for count in range(1, int(hits**0.5) + 1) if hits % count == 0)
-    return f"""title = "Short hits"
+    return f"""title = "Hits"
 circuit = "{circuit}"
 [sound]
-length = {SHORT_S}
+length = {HIT_S}
 [level]
 measure = "momentary"
 target = "-20 LUFS"
@@ -92,8 +97,8 @@ def _main(pack: str, folder: str, jobs: int, stages: bool) -> None:
     seconds = time.perf_counter() - begin
     if result.failed:
         raise SystemExit(f"{len(result.failed)} hits failed: {result.failed}")
-    peak_mb = watched.stop() if jobs > 1 else _peak_mb(os.getpid())
-    print(json.dumps({"hits": len(plan.hits), "jobs": jobs, "seconds": seconds, "peak_mb": peak_mb, "stages": spent}))
+    run = PackRun(len(plan.hits), jobs, seconds, watched.stop(), _peak_mb(os.getpid()), spent)
+    print(json.dumps(asdict(run)))
 
 
 class _Workers(threading.Thread):
@@ -104,16 +109,17 @@ class _Workers(threading.Thread):
 
     def __init__(self) -> None:
         super().__init__(daemon=True)
-        self.ended, self.peak_mb = threading.Event(), 0.0
+        self.ended = threading.Event()
+        self.peak_mb: float | None = None
         self.start()
 
     def run(self) -> None:
         while not self.ended.wait(LOOK_EVERY_S):
             for process in multiprocessing.active_children():
-                self.peak_mb = max(self.peak_mb, _peak_mb(process.pid))
+                self.peak_mb = max(self.peak_mb or 0.0, _peak_mb(process.pid))
 
-    def stop(self) -> float:
-        """The largest memory any worker ever held. [MB]"""
+    def stop(self) -> float | None:
+        """The largest memory any worker ever held, if there was one. [MB]"""
         self.ended.set()
         self.join()
         return self.peak_mb

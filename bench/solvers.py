@@ -1,7 +1,8 @@
 """The solvers that are compared: each follows a circuit from its rest state and gives dense samples of its output.
 
-Every competitor gets compiled equations and a compiled Jacobian, the rest state for nothing, a restart at each corner
-of the inputs with a consistent slope, and the cheapest matrix form that it offers for the circuit's pattern.
+Every competitor gets compiled equations, the rest state for nothing, a restart at each corner of the inputs with a
+consistent slope, and the cheapest matrix form that it offers for the circuit's pattern; once with a compiled Jacobian
+and once without, which it then works out by its own finite differences.
 
 Its samples are had in two ways. "own": asked of the solver at every sample's time, the ordinary use, for which it works
 out every unknown. "joined": its bare steps, joined by the cubic through the output's values and slopes in a compiled
@@ -146,12 +147,14 @@ class Competitor:
     """A general-purpose solver on one circuit's equations.
 
     name : "IDA", or a method of SciPy's solve_ivp.
+    given : whether it is handed the Jacobian.
     """
 
     name: str
     equations: Equations
     form: Form
     y_rest: Floats
+    given: bool = True
 
     def run(self, length_s: float, rate_hz: float, tolerance: float, *, own: bool = False) -> Run:
         """Follow the circuit; `own` asks the solver itself for every sample."""
@@ -185,7 +188,7 @@ class Competitor:
             warnings.filterwarnings("ignore", "Custom sparse Jacobian")
             solver = ida.IDA(
                 _residual(self.equations, line),
-                jacfn=_ida_jacobian(self.equations, self.form, line),
+                jacfn=_ida_jacobian(self.equations, self.form, line) if self.given else None,
                 rtol=tolerance,
                 atol=ABSOLUTE_SHARE * tolerance,
                 max_num_steps=100_000_000,
@@ -201,7 +204,9 @@ class Competitor:
     def _scipy_segment(
         self, start: float, end: float, y: Floats, tolerance: float, stops: Floats | None
     ) -> tuple[Floats, Floats, Floats]:
-        banded = {"lband": self.form.lower, "uband": self.form.upper} if self.form.kind == "banded" else {}
+        shape = {"lband": self.form.lower, "uband": self.form.upper} if self.form.kind == "banded" else {}
+        if not self.given and self.form.kind == "sparse":
+            shape = {"jac_sparsity": self.form.pattern}
         rate, jacobian = self.equations.right_side, self.equations.right_jacobian
         assert rate is not None
         assert jacobian is not None
@@ -212,11 +217,11 @@ class Competitor:
             y,
             self.name,
             t_eval=stops,
-            jac=_scipy_jacobian(jacobian, self.form, line),
+            jac=_scipy_jacobian(jacobian, self.form, line) if self.given else None,
             rtol=tolerance,
             atol=ABSOLUTE_SHARE * tolerance,
             first_step=min(FIRST_STEP_S, 1e-3 * (end - start)),
-            **banded,
+            **shape,
         )
         if not solution.success:
             raise RuntimeError(solution.message)
@@ -267,12 +272,12 @@ def _scipy_jacobian(jacobian: Callable[..., Floats], form: Form, line: Floats) -
     return packed
 
 
-def competitors(name: str, equations: Equations) -> list[Competitor]:
+def competitors(name: str, equations: Equations, *, given: bool = True) -> list[Competitor]:
     """The named solver with every matrix form that it takes and that is worth trying here."""
     kinds = {"IDA": ("dense", "banded", "sparse"), "LSODA": ("dense", "banded")}.get(name, ("dense", "sparse"))
     y_rest = equations.writing.rest()
     found = matrix_forms(equations, explicit=name != "IDA")
-    return [Competitor(name, equations, form, y_rest) for form in found if form.kind in kinds]
+    return [Competitor(name, equations, form, y_rest, given) for form in found if form.kind in kinds]
 
 
 @numba.njit

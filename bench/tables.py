@@ -83,24 +83,30 @@ def _processor() -> str:
 
 
 def comparison_tables(comparisons: Sequence[Comparison]) -> str:
-    """Two tables: every solver's time at matched accuracy, and the ratios to ours."""
-    head = ["circuit", "unknowns", "solver", "matrices", "tolerance", "steps", "joined [ms]", "dB", "own [ms]", "dB"]
+    """Two tables: every solver's time at matched accuracy, and the ratios to ours over the same length of sound."""
+    head = [
+        *("circuit", "unknowns", "solver", "Jacobian", "matrices", "sound", "tolerance", "steps"),
+        *("joined [ms]", "dB", "own [ms]", "dB", "kickrender [ms]"),
+    ]
     rows: list[Row] = []
     for c in comparisons:
         lane = Match(c.lane_s, c.usual.error_db, c.usual.tolerance)
         ours = (("kickrender", c.engine), ("  as shipped", c.usual), ("  side by side", lane))
         for name, match in ours:
             first = [c.case, str(c.unknowns)] if match is c.engine else ["", ""]
-            rows.append([*first, name, "", *_how(match), "", "", _time(match), db(match.error_db)])
+            rows.append([*first, name, "", "", f"{c.length_s:g} s", *_how(match), "", "", _time(match),
+                         db(match.error_db), ""])  # fmt: skip
         for e in c.entries:
             cells = [cell for match in (e.joined, e.own) for cell in (_time(match), db(match.error_db))]
-            rows.append(["", "", e.name, e.form, *_how(e.joined), *cells])
+            jacobian = "compiled" if e.given else "differences"
+            rows.append(["", "", e.name, jacobian, e.form, f"{e.length_s:g} s", *_how(e.joined), *cells,
+                         _time(e.engine)])  # fmt: skip
     times = table(head, rows)
     rows = []
     for c in comparisons:
         ida = [e for e in c.entries if e.name == "IDA"]
         scipy = [e for e in c.entries if e.name in SCIPY_METHODS]
-        cells = [least_ratio(group, c.engine, own) for group in (ida, scipy) for own in (True, False)]
+        cells = [least_ratio(group, own) for group in (ida, scipy) for own in (True, False)]
         rows.append([c.case, *cells, db(c.agreement_db), db(c.mass_db)])
     head = [
         "circuit",
@@ -121,7 +127,7 @@ def _how(match: Match) -> list[str]:
 
 def _time(match: Match) -> str:
     """Its time; marked where it is not that of the wanted accuracy."""
-    over = f"over {match.over_s:g} s" if match.over_s else match.failure
+    over = f"over {match.over_s:g} s, stopped" if match.over_s else match.failure
     if match.seconds is None:
         return over or "-"
     if match.reached:
@@ -129,16 +135,13 @@ def _time(match: Match) -> str:
     return f"{ms(match.seconds)} (best; then {over})" if over else f"{ms(match.seconds)} (best)"
 
 
-def least_ratio(entries: Sequence[Entry], ours: Match, own: bool) -> str:
-    """The smallest ratio of the group; a bound where the time limit cut all of them short."""
-    matches = [e.own if own else e.joined for e in entries]
-    found = [r for m in matches if (r := ratio(m, ours)) is not None]
+def least_ratio(entries: Sequence[Entry], own: bool) -> str:
+    """The smallest ratio of the group; "stopped" where the time limit cut them short."""
+    matches = [(e.own if own else e.joined, e.engine) for e in entries]
+    found = [r for theirs, ours in matches if (r := ratio(theirs, ours)) is not None]
     if found:
         return f"{min(found):.0f}x" if min(found) >= 10 else f"{min(found):.1f}x"
-    limits = [m.over_s for m in matches if m.over_s]
-    if limits and ours.seconds:
-        return f"over {max(limits) / ours.seconds:.0f}x"
-    return "-"
+    return "stopped" if any(theirs.over_s for theirs, _ in matches) else "-"
 
 
 def exponent(sizes: Sequence[float], costs: Sequence[float]) -> float:
@@ -148,11 +151,12 @@ def exponent(sizes: Sequence[float], costs: Sequence[float]) -> float:
 
 def pack_table(runs: Sequence[tuple[str, PackRun]]) -> str:
     """Hits per second and memory."""
-    rows = [
-        [name, str(r.hits), str(r.jobs), f"{r.seconds:.2f}", f"{r.hits / r.seconds:.1f}", f"{r.peak_mb:.0f}"]
-        for name, r in runs
-    ]
-    return table(["pack", "hits", "workers", "seconds", "hits/s", "largest process [MB]"], rows)
+    rows = []
+    for name, r in runs:
+        worker = "itself" if r.worker_mb is None else f"{r.worker_mb:.0f}"
+        counts = [str(r.hits), str(r.jobs), f"{r.seconds:.2f}", f"{r.hits / r.seconds:.1f}"]
+        rows.append([name, *counts, worker, f"{r.parent_mb:.0f}"])
+    return table(["pack", "hits", "jobs", "seconds", "hits/s", "largest worker [MB]", "parent [MB]"], rows)
 
 
 def stage_table(run: PackRun) -> str:

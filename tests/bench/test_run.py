@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import itertools
+
 import numpy as np
 import pytest
 
@@ -9,10 +11,10 @@ from bench import tables
 from bench.accuracy import Match, error_db, matched
 from bench.aliasing import aliasing
 from bench.circuits import Case, ladder_text
-from bench.compare import Effort, compare, ratio
+from bench.compare import LENGTHS_S, Effort, Entry, compare, one_entry, ratio
 from bench.equations import NotCovered, compiled, with_mass
 from bench.growth import growth_with_nets
-from bench.packs import STAGES, PackRun, short_hits_text
+from bench.packs import STAGES, PackRun, hits_text
 from bench.run import Report
 from bench.solvers import Run, competitors, run_engine
 from kickrender.circuit import read_circuit_text
@@ -59,14 +61,16 @@ def test_every_solver_reaches_the_engines_solution_and_the_table_shows_it(shaper
     effort = Effort(length_s=1e-3, rate_hz=48_000.0, repeats=1, limit_s=60.0)
     found = compare(Case("shaper", shaper), effort)
     assert found.agreement_db < -120.0  # equations written twice, two solvers: one solution
-    assert [entry.name for entry in found.entries] == ["IDA", "Radau", "BDF", "LSODA"]
+    methods = ["IDA", "Radau", "BDF", "LSODA"]
+    assert [(entry.name, entry.given) for entry in found.entries] == list(itertools.product(methods, (True, False)))
     assert all(entry.joined.reached and entry.own.error_db < -99.0 for entry in found.entries)
     times, ratios = tables.comparison_tables([found]).split("\n\n")
     assert [row[2] for row in table_cells(times)[2:]] == [
         *("kickrender", "as shipped", "side by side"),
-        *("IDA", "Radau", "BDF", "LSODA"),
+        *(name for name in methods for _ in range(2)),
     ]
-    assert all(len(row) == 10 for row in table_cells(times))
+    assert [row[3] for row in table_cells(times)[5:]] == ["compiled", "differences"] * 4
+    assert all(len(row) == 13 and row[5] == "0.001 s" for row in table_cells(times)[2:])
     assert all(cell.endswith("x") for cell in table_cells(ratios)[2][1:5])
 
 
@@ -76,12 +80,14 @@ def test_every_matrix_form_gives_the_same_samples():
     equations = compiled(circuit, explicit=True)
     truth = run_engine(circuit, 1e-3, 48_000.0, 1e-10).samples
     errors = {
-        (name, choice.form.kind): error_db(choice.run(1e-3, 48_000.0, 1e-9).samples, truth)
+        (name, choice.form.kind, given): error_db(choice.run(1e-3, 48_000.0, 1e-9).samples, truth)
+        for given in (True, False)
         for name in ("IDA", "Radau", "LSODA")
-        for choice in competitors(name, equations)
+        for choice in competitors(name, equations, given=given)
     }
     forms = [("IDA", "dense"), ("IDA", "banded"), ("IDA", "sparse"), ("Radau", "dense"), ("Radau", "sparse")]
-    assert list(errors) == [*forms, ("LSODA", "dense"), ("LSODA", "banded")]
+    forms += [("LSODA", "dense"), ("LSODA", "banded")]
+    assert list(errors) == [(*form, given) for given in (True, False) for form in forms]
     assert max(errors.values()) < -100.0
 
 
@@ -122,7 +128,26 @@ def test_a_solver_that_takes_too_long_is_stopped_and_said_so():
 
     found = matched(run, np.ones(2), 0.05, repeats=1)
     assert (found.seconds, found.over_s) == (None, 0.05)
-    assert tables.least_ratio([], found, own=True) == "-"
+    assert tables.least_ratio([], own=True) == "-"
+    entry = Entry("BDF", True, "dense", 0.02, found, found, Match(0.5, -110.0, 1e-6))
+    assert tables.least_ratio([entry], own=True) == "stopped"
+
+
+@pytest.mark.slow
+def test_a_slow_solver_is_measured_over_a_shorter_sound(shaper):
+    effort = Effort(length_s=0.2, rate_hz=48_000.0, repeats=1, run_s=1e-6)
+    explicit = compiled(with_mass(shaper), explicit=True)
+    truth = run_engine(with_mass(shaper), 0.2, 48_000.0, 1e-10).samples
+    over: list[float] = []
+
+    def ours(length_s: float) -> Match:
+        over.append(length_s)
+        return Match(1.0, -110.0, 1e-6)
+
+    entry = one_entry(competitors("LSODA", explicit), truth, effort, ours)
+    assert entry.length_s == LENGTHS_S[0]
+    assert over == [entry.length_s]
+    assert entry.joined.reached
 
 
 def test_growth_and_aliasing_of_a_small_circuit(shaper):
@@ -134,11 +159,15 @@ def test_growth_and_aliasing_of_a_small_circuit(shaper):
 
 
 def test_pack_tables():
-    run = PackRun(10, 1, 2.0, 100.0, dict.fromkeys(STAGES, 0.1))
-    assert table_cells(tables.pack_table([("some", run)]))[2] == ["some", "10", "1", "2.00", "5.0", "100"]
+    run = PackRun(10, 1, 2.0, None, 100.0, dict.fromkeys(STAGES, 0.1))
+    cells = table_cells(tables.pack_table([("some", run), ("more", PackRun(10, 2, 1.0, 90.0, 80.0))]))
+    assert cells[2:] == [
+        ["some", "10", "1", "2.00", "5.0", "itself", "100"],
+        ["more", "10", "2", "1.00", "10.0", "90", "80"],
+    ]
     assert table_cells(tables.stage_table(run))[-2] == ["all else", "130", "65 %"]
-    assert "steps = 5" in short_hits_text("bridged-t", 50)
-    assert "steps = 10" in short_hits_text("bridged-t", 50)
+    assert "steps = 5" in hits_text("bridged-t", 50)
+    assert "steps = 10" in hits_text("bridged-t", 50)
 
 
 def test_targets_say_whether_they_were_reached(capsys):
