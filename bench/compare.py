@@ -69,7 +69,7 @@ class Entry:
 @dataclass(frozen=True)
 class Comparison:
     """length_s : of sound; engine : ours at matched accuracy; usual : at its default tolerance; lane_s : the same, per
-    hit, side by side. agreement_db : IDA at its tightest against the converged solution. mass_db : what small masses do.
+    hit, side by side. agreement_db : IDA at its tightest against the converged solution. mass_db : of small masses.
     """
 
     case: str

@@ -30,7 +30,8 @@ class PackRun:
     """seconds : from plan to manifest, without Python's start.
 
     worker_mb : the most memory that any worker ever held; None where the one process did it all. [MB]
-    parent_mb : the most that the process held which gives out the work and writes manifest and sheets. [MB]
+    parent_mb : the most that the process which gives out the work had held when every hit was there. [MB]
+    sheets_mb : the same when manifest and sheets were written too. [MB]
     """
 
     hits: int
@@ -38,6 +39,7 @@ class PackRun:
     seconds: float
     worker_mb: float | None
     parent_mb: float
+    sheets_mb: float
     stages: dict[str, float] = field(default_factory=dict)
 
 
@@ -90,6 +92,7 @@ def _main(pack: str, folder: str, jobs: int, stages: bool) -> None:
 
     warm_up()
     spent = _clocks() if stages else {}
+    rendered_mb = _memory_before_manifest()
     watched = _Workers()
     begin = time.perf_counter()
     plan = plan_pack(read_pack(pack))
@@ -97,7 +100,7 @@ def _main(pack: str, folder: str, jobs: int, stages: bool) -> None:
     seconds = time.perf_counter() - begin
     if result.failed:
         raise SystemExit(f"{len(result.failed)} hits failed: {result.failed}")
-    run = PackRun(len(plan.hits), jobs, seconds, watched.stop(), _peak_mb(os.getpid()), spent)
+    run = PackRun(len(plan.hits), jobs, seconds, watched.stop(), rendered_mb[0], _peak_mb(os.getpid()), spent)
     print(json.dumps(asdict(run)))
 
 
@@ -123,6 +126,20 @@ class _Workers(threading.Thread):
         self.ended.set()
         self.join()
         return self.peak_mb
+
+
+def _memory_before_manifest() -> list[float]:
+    """A list that gets this process's peak when the manifest is begun. [MB]"""
+    from kickrender.pack import run
+
+    inner, found = run.write_manifest, []
+
+    def looking(*args: Any, **kwargs: Any) -> None:
+        found.append(_peak_mb(os.getpid()))
+        inner(*args, **kwargs)
+
+    run.write_manifest = looking
+    return found
 
 
 def _peak_mb(process: int | None) -> float:

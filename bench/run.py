@@ -134,8 +134,8 @@ sweep over the tolerances, is stopped after {e.limit_s:g} s and says so.
 
 _PACKS = """\
 From pack file to manifest and sheets; Python's start is left out, files are not waited for. A worker is a process
-that renders: with one job, or few hits, the pack's own process is it. The parent gives out batches and writes manifest
-and sheets.
+that renders: with one job, or few hits, the pack's own process is it. The parent is the process that gives out batches;
+its memory is told when every hit is there, and again after manifest and sheets, which hold a little of every hit.
 """
 
 

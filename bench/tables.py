@@ -155,8 +155,9 @@ def pack_table(runs: Sequence[tuple[str, PackRun]]) -> str:
     for name, r in runs:
         worker = "itself" if r.worker_mb is None else f"{r.worker_mb:.0f}"
         counts = [str(r.hits), str(r.jobs), f"{r.seconds:.2f}", f"{r.hits / r.seconds:.1f}"]
-        rows.append([name, *counts, worker, f"{r.parent_mb:.0f}"])
-    return table(["pack", "hits", "jobs", "seconds", "hits/s", "largest worker [MB]", "parent [MB]"], rows)
+        rows.append([name, *counts, worker, f"{r.parent_mb:.0f}", f"{r.sheets_mb:.0f}"])
+    head = ["pack", "hits", "jobs", "seconds", "hits/s", "largest worker [MB]", "parent [MB]", "after sheets [MB]"]
+    return table(head, rows)
 
 
 def stage_table(run: PackRun) -> str:

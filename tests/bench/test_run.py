@@ -159,11 +159,11 @@ def test_growth_and_aliasing_of_a_small_circuit(shaper):
 
 
 def test_pack_tables():
-    run = PackRun(10, 1, 2.0, None, 100.0, dict.fromkeys(STAGES, 0.1))
-    cells = table_cells(tables.pack_table([("some", run), ("more", PackRun(10, 2, 1.0, 90.0, 80.0))]))
+    run = PackRun(10, 1, 2.0, None, 100.0, 120.0, dict.fromkeys(STAGES, 0.1))
+    cells = table_cells(tables.pack_table([("some", run), ("more", PackRun(10, 2, 1.0, 90.0, 80.0, 95.0))]))
     assert cells[2:] == [
-        ["some", "10", "1", "2.00", "5.0", "itself", "100"],
-        ["more", "10", "2", "1.00", "10.0", "90", "80"],
+        ["some", "10", "1", "2.00", "5.0", "itself", "100", "120"],
+        ["more", "10", "2", "1.00", "10.0", "90", "80", "95"],
     ]
     assert table_cells(tables.stage_table(run))[-2] == ["all else", "130", "65 %"]
     assert "steps = 5" in hits_text("bridged-t", 50)
