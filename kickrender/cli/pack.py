@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import os
 import sys
+from collections.abc import Sequence
 from pathlib import Path
 from typing import TYPE_CHECKING
 
@@ -16,9 +17,8 @@ from kickrender.errors import Fault, InputError, KickrenderError
 if TYPE_CHECKING:
     from kickrender.pack.cluster import Cluster
     from kickrender.pack.records import Pack, Plan
-    from kickrender.pack.run import Result
 
-MOST_NAMES = 20  # told by a dry run, and of near-duplicates
+MOST_NAMES = 20  # of one kind are told
 
 
 @click.command()
@@ -106,9 +106,11 @@ def _render(
         result = render_plan(plan, out, workers, bar.update, cluster, drop_duplicates)
     if result.kept:
         note(f"{len(result.kept)} hits were there already")
-    for file in result.stale:
-        note(f"note: {file} is of an earlier run and no hit of this pack any more")
-    _tell_duplicates(result)
+    _tell_some([f"{file} is of an earlier run and no hit of this pack any more" for file in result.stale])
+    told = "left out: " if result.left_out else ""
+    _tell_some([f"{told}{duplicate}" for duplicate in result.duplicates])
+    if result.duplicates and not result.left_out:
+        note("note: --drop-duplicates leaves near duplicates out")
     summary = f"{out}: {len(result.rendered) + len(result.kept)} hits, {len(result.rendered)} of them rendered now"
     if result.duplicates:
         summary += f", {len(result.duplicates)} near duplicates{' left out' if drop_duplicates else ''}"
@@ -117,14 +119,11 @@ def _render(
         raise HitsFailed("\n".join(f"{name}: {reason}" for name, reason in result.failed.items()))
 
 
-def _tell_duplicates(result: Result) -> None:
-    told = "left out: " if result.left_out else ""
-    for duplicate in result.duplicates[:MOST_NAMES]:
-        note(f"note: {told}{duplicate}")
-    if len(result.duplicates) > MOST_NAMES:
-        note(f"note: and {len(result.duplicates) - MOST_NAMES} more, all of them in pack.json")
-    if result.duplicates and not result.left_out:
-        note("note: --drop-duplicates leaves near duplicates out")
+def _tell_some(notes: Sequence[str]) -> None:
+    for text in notes[:MOST_NAMES]:
+        note(f"note: {text}")
+    if len(notes) > MOST_NAMES:
+        note(f"note: and {len(notes) - MOST_NAMES} more of this kind")
 
 
 def _foretell(plan: Plan, workers: int) -> None:
