@@ -53,9 +53,10 @@ def fit(
 ) -> None:
     """Find part values with which CIRCUIT meets goals, from the series in which parts are made (IEC 60063).
 
-    Goals are pitch (Hz or a note), decay (time to -60 dB), drop (start over settled pitch, in semitones: st) and
-    centroid (Hz). A part stays within a tenth and ten times its value. Every combination told was rendered and
-    measured; they are ranked by how far they miss, in the tolerances of a pack's goals (2 cents, 3 %, 0.25 semitones).
+    Goals are pitch (Hz or a note), decay (time to -60 dB), drop (start over settled pitch, in semitones: st), drop_time
+    (until 1/e of the drop is left) and centroid (Hz). A part stays within a tenth and ten times its value. Every
+    combination told was rendered and measured; they are ranked by how far they miss, in the tolerances of a pack's
+    goals (2 cents, 3 %, a quarter of a semitone ...).
 
     \b
     Examples:

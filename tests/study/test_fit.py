@@ -14,9 +14,11 @@ import kickrender
 from kickrender.circuit import Circuit, read_circuit, read_circuit_text
 from kickrender.circuit.series import values_between
 from kickrender.errors import InputError, MeasurementError, WriteError
+from kickrender.sound.goals import GOALS as GOAL_KINDS
 from kickrender.sound.loaded import LoadedCircuit
 from kickrender.sound.options import SoundOptions
 from kickrender.study import fit_bench
+from kickrender.study.aspects import ASPECTS
 from kickrender.study.fit import Fit, fit
 from kickrender.study.fit_bench import Bench, miss, miss_unit
 from kickrender.study.fit_parts import chosen_parts
@@ -160,6 +162,7 @@ def test_counts_have_a_range(count: int) -> None:
         ("drop=14 semitones", "drop", 14.0),
         ("drop=1", "drop", 1.0),
         ("drop=1400cents", "drop", 14.0),
+        ("drop_time=30ms", "drop_time", 0.03),
         ("centroid=0.9kHz", "centroid", 900.0),
     ],
 )
@@ -186,6 +189,10 @@ def test_what_is_no_goal_is_told(texts: list[str], message: str) -> None:
     with pytest.raises(InputError) as caught:
         read_goals(texts, "--goal")
     assert message in str(caught.value)
+
+
+def test_whatever_can_be_a_goal_can_be_measured_of_a_fit() -> None:
+    assert set(GOAL_KINDS) <= set(ASPECTS)
 
 
 def test_a_part_that_a_control_moves_is_not_varied() -> None:
