@@ -221,3 +221,21 @@ def test_a_shipped_pack_plans(name: str, hits: int, run: Run) -> None:
     count = int(re.findall(r": (\d+) hits, about", lines[0])[0])
     assert count >= hits
     assert lines[-1] == f"  and {count - 20} more"
+
+
+def test_a_name_in_flac_asks_for_flac(run: Run, folder: Path) -> None:
+    ran = run("render", "voice.toml", "--out", "h.flac", "--level", "-20 LUFS")
+    assert ran.code == 0
+    assert ran.out.startswith("h.flac: ")
+    info = soundfile.info("h.flac")
+    assert (info.format, info.subtype) == ("FLAC", "PCM_24")
+    assert json.loads(Path("h.json").read_bytes())["sound"]["format"] == "flac24"
+    assert run("render", "voice.toml", "--out", "h.flac", "--format", "flac16", "--level", "-20 LUFS").code == 0
+    assert soundfile.info("h.flac").subtype == "PCM_16"
+    many = [word for _ in range(8) for word in ("--probe", "core")]
+    ran = run("render", "voice.toml", "--out", "many.flac", *many)
+    assert (ran.code, ran.err) == (
+        2,
+        "kickrender: --probe: 9 channels in a FLAC file; allowed: at most 8, or a WAV format\n",
+    )
+    assert not Path("many.flac").exists()

@@ -11,7 +11,8 @@ import soundfile
 
 from kickrender.errors import InputError, WriteError
 from kickrender.sound.finish import Pcm, quantise
-from kickrender.sound.options import FORMATS, SAMPLES, read_options
+from kickrender.sound.loaded import load
+from kickrender.sound.options import FORMATS, SAMPLES, SoundOptions, read_options
 from kickrender.sound.sound_file import check_channels, check_sound_name, pcm_digest_of_file, write_sound
 from kickrender.sound.wav import pcm_sha256
 
@@ -116,3 +117,15 @@ def test_more_channels_than_flac_has_are_refused(tmp_path: Path) -> None:
     with pytest.raises(InputError, match="9 channels in a FLAC file"):
         write_sound(tmp_path / "a.flac", pcm_of("pcm16", (10, 9)), RATE_HZ, "flac16")
     assert os.listdir(tmp_path) == []
+
+
+def test_a_sound_is_written_under_a_name_of_its_format_only(tmp_path: Path) -> None:
+    sound = load("bridged-t").render(options=SoundOptions(format="flac24", length_s=0.05))
+    with pytest.raises(InputError, match="path: found '.*a.wav' for flac24"):
+        sound.write(tmp_path / "a.wav")
+    assert os.listdir(tmp_path) == []
+    sound.write(tmp_path / "a.flac")
+    assert pcm_digest_of_file(tmp_path / "a.flac") == sound.facts["pcm"]["sha256"]
+    plain = load("bridged-t").render(options=SoundOptions(format="pcm24", length_s=0.05))
+    assert plain.facts["pcm"] == sound.facts["pcm"]
+    assert plain.facts["recipe_digest"] == sound.facts["recipe_digest"]
