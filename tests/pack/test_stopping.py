@@ -93,6 +93,28 @@ def test_after_kills_at_random_points_a_rerun_gives_the_same_pack(
     assert contents(out) == many_rendered, points
 
 
+@pytest.mark.slow
+def test_after_kills_a_rerun_leaves_out_the_same_duplicates(many: Path) -> None:
+    """Killed while hits are rendered, and while those left out are taken away again, which pack.json has told of."""
+    whole, out = many.parent / "whole", many.parent / "out"
+    text = many.read_text().replace("steps = 100", "steps = 40")
+    many.write_text(f"{text}[duplicates]\nbelow = -20\n")  # which neighbours then are
+    options = ("--jobs", "1", "--drop-duplicates")
+    expected, complaint = start(many, whole, *options).communicate(timeout=120)
+    assert "near duplicates left out" in expected, complaint
+    for until in ("files", "manifest"):
+        run = start(many, out, *options)
+        wait_for_files(out, run, random.randrange(1, 100) if until == "files" else 120)
+        while until == "manifest" and run.poll() is None and not (out / "pack.json").exists():
+            time.sleep(0.0005)
+        time.sleep(random.uniform(0, 0.01))
+        run.kill()
+        run.communicate(timeout=20)
+    said, complaint = start(many, out, *options).communicate(timeout=120)
+    assert said.split(",")[0].split(": ")[1] == expected.split(",")[0].split(": ")[1], complaint
+    assert contents(out) == contents(whole)
+
+
 @pytest.mark.parametrize(("room", "file"), [(500, "1V.wav"), (3000, "1V.json")])
 def test_a_full_disk_is_one_message_and_leaves_nothing_half_written(room: int, file: str, many: Path) -> None:
     out = many.parent / "out"
