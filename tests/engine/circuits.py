@@ -25,7 +25,7 @@ def ideal_opamp(gain_bandwidth_hz: float) -> str:
 
 
 def circuit(
-    parts: dict[str, str],
+    parts: dict[str, str] | str,
     *,
     inputs: dict[str, str] | None = None,
     nets: dict[str, str] | None = None,
@@ -36,10 +36,13 @@ def circuit(
 ) -> ResolvedCircuit:
     """A resolved circuit from its lines.
 
-    parts : name -> "kind value a b" with nets in the order of the kind's terminals (diode anode cathode, transistor
-        collector base emitter, op-amp plus minus out high low); value is a value, a model's name, or true or false.
+    parts : name -> "kind value a b", or a text with a line "name kind value a b" for each. Nets stand in the order of
+        the kind's terminals (diode anode cathode, transistor collector base emitter, op-amp plus minus out high low);
+        value is a value, a model's name, or true or false.
     inputs, models : name -> the right-hand side of its line in a circuit file. nets : name -> voltage.
     """
+    if isinstance(parts, str):
+        parts = dict(line.split(maxsplit=1) for line in parts.splitlines() if line.strip())
     lines = ['title = "test"', f'temperature = "{temperature}"', "[nets]"]
     lines += [f'{net} = "{volts}"' for net, volts in (nets or {}).items()]
     for net, wave in (inputs or {}).items():
@@ -87,17 +90,17 @@ def ladder(count: int, wave: str = STRIKE, ohm: str = "1k", farad: str = "10n") 
 def resonator(q_leg: str = "1k", wave: str = STRIKE) -> ResolvedCircuit:
     """An op-amp bridged-T struck into its leg through a resistor, with a diode clipper on its way out."""
     return circuit(
-        {
-            "Rs": "resistor 100k gate leg",
-            "Rl": f"resistor {q_leg} leg ground",
-            "C1": "capacitor 15n ring leg",
-            "C2": "capacitor 15n leg sum",
-            "Rb": "resistor 1M ring sum",
-            "U": "opamp fet-input ground sum ring plus minus",
-            "Ro": "resistor 4k7 ring out",
-            "D1": "diode silicon out ground",
-            "D2": "diode silicon ground out",
-        },
+        f"""
+        Rs resistor 100k gate leg
+        Rl resistor {q_leg} leg ground
+        C1 capacitor 15n ring leg
+        C2 capacitor 15n leg sum
+        Rb resistor 1M ring sum
+        U opamp fet-input ground sum ring plus minus
+        Ro resistor 4k7 ring out
+        D1 diode silicon out ground
+        D2 diode silicon ground out
+        """,
         inputs={"gate": wave},
         nets=RAILS,
     )
@@ -106,17 +109,17 @@ def resonator(q_leg: str = "1k", wave: str = STRIKE) -> ResolvedCircuit:
 def comparator(wave: str = STRIKE) -> ResolvedCircuit:
     """An op-amp without feedback: its tanh saturates exactly, and its row keeps only its own rate."""
     return circuit(
-        {
-            "R1": "resistor 10k gate a",
-            "C1": "capacitor 10n a ground",
-            "U": "opamp fet-input a level switched plus minus",
-            "R2": "resistor 10k plus level",
-            "R3": "resistor 2k level ground",
-            "R4": "resistor 1k switched ground",
-            "D": "diode silicon switched out",
-            "R5": "resistor 10k out ground",
-            "C2": "capacitor 10n out ground",
-        },
+        """
+        R1 resistor 10k gate a
+        C1 capacitor 10n a ground
+        U opamp fet-input a level switched plus minus
+        R2 resistor 10k plus level
+        R3 resistor 2k level ground
+        R4 resistor 1k switched ground
+        D diode silicon switched out
+        R5 resistor 10k out ground
+        C2 capacitor 10n out ground
+        """,
         inputs={"gate": wave},
         nets=RAILS,
     )
@@ -125,20 +128,20 @@ def comparator(wave: str = STRIKE) -> ResolvedCircuit:
 def lopsided(wave: str = STRIKE) -> ResolvedCircuit:
     """Transistors of both polarities, a coil, a switch and every kind of input."""
     return circuit(
-        {
-            "R1": "resistor 22k gate base",
-            "Q1": "npn small-npn knot base ground",
-            "R2": "resistor 4k7 knot out",
-            "L1": "inductor 1 out far",
-            "C1": "capacitor 470n far ground",
-            "C2": "capacitor 220n out ground",
-            "Q2": "pnp small-pnp far low plus",
-            "R3": "resistor 220k low ground",
-            "R4": "resistor 47k low hum",
-            "S1": "switch true far drain",
-            "R5": "resistor 10k drain slope",
-            "R6": "resistor 10k bias out",
-        },
+        """
+        R1 resistor 22k gate base
+        Q1 npn small-npn knot base ground
+        R2 resistor 4k7 knot out
+        L1 inductor 1 out far
+        C1 capacitor 470n far ground
+        C2 capacitor 220n out ground
+        Q2 pnp small-pnp far low plus
+        R3 resistor 220k low ground
+        R4 resistor 47k low hum
+        S1 switch true far drain
+        R5 resistor 10k drain slope
+        R6 resistor 10k bias out
+        """,
         inputs={
             "gate": wave,
             "hum": 'sine = { amplitude = "1V", frequency = "333Hz", offset = "1V" }',

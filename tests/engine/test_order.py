@@ -10,6 +10,7 @@ from pathlib import Path
 import numpy as np
 import pytest
 
+from kickrender.circuit import ResolvedCircuit
 from kickrender.engine import solve
 from tests.engine.circuits import RAILS, circuit, rc
 from tests.engine.fixed_steps import fixed_steps, slope_of
@@ -17,104 +18,93 @@ from tests.engine.fixed_steps import fixed_steps, slope_of
 ROOT = Path(__file__).parents[2]
 SINE = 'sine = { amplitude = "1V", frequency = "200Hz", phase = "20deg" }'
 LENGTH_S = 5e-3
-PLAIN = {"plain": '{ kind = "diode", saturation_current = "10n", ideality = 2 }'}
-BEHIND = {"plain": '{ kind = "diode", saturation_current = "1u", ideality = 4, series_resistance = 200 }'}
-SMALL = {
-    "q": '{ kind = "npn", saturation_current = "10f", forward_gain = 100, reverse_gain = 1, early_voltage = "60V" }'
-}
-SLOW = {
+MODELS = {
+    "plain": '{ kind = "diode", saturation_current = "10n", ideality = 2 }',
+    "behind": '{ kind = "diode", saturation_current = "1u", ideality = 4, series_resistance = 200 }',
+    "q": '{ kind = "npn", saturation_current = "10f", forward_gain = 100, reverse_gain = 1, early_voltage = "60V" }',
     "u": '{ kind = "opamp", gain_bandwidth = "1kHz", slew_rate = 3e3, headroom_high = 1, headroom_low = 1, '
-    "dc_gain = 1e5 }"
+    "dc_gain = 1e5 }",
 }
+
+
+def driven(parts: str, nets: dict[str, str] | None = None, wave: str = SINE) -> ResolvedCircuit:
+    """A circuit with an input called `in`."""
+    return circuit(parts, inputs={"in": wave}, models=MODELS, nets=nets)
+
 
 # Each circuit reaches the stepper by another way: through a state's own current law, a net without charge, a
 # capacitor (u' and u''), a junction's slope, an op-amp's input.
 CIRCUITS = {
-    "states only, nonlinear": circuit(
-        {
-            "R1": "resistor 1k in out",
-            "C1": "capacitor 1u out ground",
-            "D": "diode plain out ground",
-            "R2": "resistor 2k out far",
-            "C2": "capacitor 330n far ground",
-        },
-        inputs={"in": SINE},
-        models=PLAIN,
+    "states only, nonlinear": driven(
+        """
+        R1 resistor 1k in out
+        C1 capacitor 1u out ground
+        D diode plain out ground
+        R2 resistor 2k out far
+        C2 capacitor 330n far ground
+        """,
     ),
-    "nets without charge": circuit(
-        {
-            "R1": "resistor 1k in a",
-            "D": "diode plain a out",
-            "R2": "resistor 3k out ground",
-            "R3": "resistor 1k out store",
-            "C": "capacitor 330n store ground",
-            "R4": "resistor 4k7 a b",
-            "D2": "diode plain ground b",
-            "R5": "resistor 10k b ground",
-        },
-        inputs={"in": SINE},
-        models=BEHIND,
+    "nets without charge": driven(
+        """
+        R1 resistor 1k in a
+        D diode behind a out
+        R2 resistor 3k out ground
+        R3 resistor 1k out store
+        C capacitor 330n store ground
+        R4 resistor 4k7 a b
+        D2 diode behind ground b
+        R5 resistor 10k b ground
+        """,
     ),
-    "through a capacitor": circuit(
-        {
-            "C1": "capacitor 330n in out",
-            "R1": "resistor 2k2 out ground",
-            "D": "diode plain out ground",
-            "C2": "capacitor 100n out ground",
-        },
-        inputs={"in": SINE},
-        models=PLAIN,
+    "through a capacitor": driven(
+        """
+        C1 capacitor 330n in out
+        R1 resistor 2k2 out ground
+        D diode plain out ground
+        C2 capacitor 100n out ground
+        """,
     ),
-    "into a junction": circuit(
-        {
-            "D": "diode plain in out",
-            "C": "capacitor 1u out ground",
-            "R": "resistor 1k out ground",
-        },
-        inputs={"in": SINE},
-        models=PLAIN,
+    "into a junction": driven(
+        """
+        D diode plain in out
+        C capacitor 1u out ground
+        R resistor 1k out ground
+        """,
     ),
-    "into a base, nothing stored there": circuit(
-        {
-            "Q": "npn q collector in emitter",
-            "R1": "resistor 2k2 collector plus",
-            "R2": "resistor 1k emitter minus",
-            "C1": "capacitor 1u emitter out",
-            "R3": "resistor 1k out ground",
-        },
-        inputs={"in": SINE},
-        models=SMALL,
+    "into a base, nothing stored there": driven(
+        """
+        Q npn q collector in emitter
+        R1 resistor 2k2 collector plus
+        R2 resistor 1k emitter minus
+        C1 capacitor 1u emitter out
+        R3 resistor 1k out ground
+        """,
         nets=RAILS,
     ),
-    "into an op-amp": circuit(
-        {
-            "U": "opamp u in m out plus minus",
-            "R1": "resistor 10k out m",
-            "R2": "resistor 10k m ground",
-            "C": "capacitor 22n out m",
-        },
-        inputs={"in": SINE},
-        models=SLOW,
+    "into an op-amp": driven(
+        """
+        U opamp u in m out plus minus
+        R1 resistor 10k out m
+        R2 resistor 10k m ground
+        C capacitor 22n out m
+        """,
         nets=RAILS,
     ),
-    "into a rail": circuit(
-        {
-            "U": "opamp u plus out out in minus",
-            "R": "resistor 10k out ground",
-        },
-        inputs={"in": 'sine = { amplitude = "0.2V", frequency = "200Hz", offset = "5V" }'},
-        models=SLOW,
+    "into a rail": driven(
+        """
+        U opamp u plus out out in minus
+        R resistor 10k out ground
+        """,
+        wave='sine = { amplitude = "0.2V", frequency = "200Hz", offset = "5V" }',
         nets=RAILS,
     ),
-    "into a coil": circuit(
-        {
-            "L": "inductor 0.5 in out",
-            "C": "capacitor 1u out ground",
-            "R": "resistor 1k out ground",
-            "D": "diode plain out ground",
-        },
-        inputs={"in": SINE},
-        models=PLAIN,
+    "into a coil": driven(
+        """
+        L inductor 0.5 in out
+        C capacitor 1u out ground
+        R resistor 1k out ground
+        D diode plain out ground
+        """,
     ),
 }
 COUNTS = [160, 226, 320, 453, 640]

@@ -4,21 +4,8 @@ from pathlib import Path
 
 import pytest
 
-from kickrender.errors import InputError
-from kickrender.pack.plan import plan_pack
-from kickrender.pack.read import read_pack_text
-from kickrender.pack.records import Plan
+from tests.pack.plans import faults_of, plan_of
 from tests.pack.texts import PACK
-
-
-def plan_of(text: str, folder: Path) -> Plan:
-    return plan_pack(read_pack_text(text, "p.toml", folder))
-
-
-def faults_of(text: str, folder: Path) -> list[str]:
-    with pytest.raises(InputError) as caught:
-        plan_of(text, folder)
-    return [str(fault) for fault in caught.value.faults]
 
 
 def test_hits_stand_in_the_order_of_the_file_the_last_axis_fastest(folder: Path) -> None:

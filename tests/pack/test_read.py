@@ -6,13 +6,8 @@ import pytest
 
 from kickrender.errors import InputError
 from kickrender.pack.read import read_pack, read_pack_text
+from tests.pack.plans import read_faults_of as faults_of
 from tests.pack.texts import PACK
-
-
-def faults_of(text: str, folder: Path) -> list[str]:
-    with pytest.raises(InputError) as caught:
-        read_pack_text(text, "p.toml", folder)
-    return [str(fault) for fault in caught.value.faults]
 
 
 def test_everything_a_pack_may_say(folder: Path) -> None:

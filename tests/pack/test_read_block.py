@@ -5,10 +5,10 @@ from pathlib import Path
 import pytest
 
 from kickrender.circuit.spread import Spread
-from kickrender.errors import InputError
 from kickrender.pack.read import read_pack_text
 from kickrender.pack.records import Block, Design, Span
 from kickrender.sound.goals import note_hz
+from tests.pack.plans import read_faults_of as faults_of
 from tests.pack.texts import PACK
 
 DRAWN = PACK.replace(", steps = 3", "") + '[design]\nkind = "sobol"\ncount = 8\nseed = 3\n'
@@ -17,12 +17,6 @@ TAKES = '[takes]\ncount = 4\nseed = "night"\n[takes.spread]\nresistor = "1%"\nR1
 
 def block_of(text: str, folder: Path) -> Block:
     return read_pack_text(text, "p.toml", folder).blocks[0]
-
-
-def faults_of(text: str, folder: Path) -> list[str]:
-    with pytest.raises(InputError) as caught:
-        read_pack_text(text, "p.toml", folder)
-    return [str(fault) for fault in caught.value.faults]
 
 
 def test_goals(folder: Path) -> None:

@@ -19,16 +19,11 @@ from scipy.io import wavfile
 
 from kickrender.errors import WriteError
 from kickrender.pack import batches
-from kickrender.pack.plan import plan_pack
-from kickrender.pack.read import read_pack_text
 from kickrender.pack.records import Plan
 from kickrender.pack.run import Result, render_plan
 from tests.pack.folders import contents, hit_files, validate
+from tests.pack.plans import plan_of
 from tests.pack.texts import PACK
-
-
-def plan_of(text: str, folder: Path) -> Plan:
-    return plan_pack(read_pack_text(text, "p.toml", folder))
 
 
 def sidecars(folder: Path) -> list[dict[str, Any]]:

@@ -5,12 +5,9 @@ from pathlib import Path
 import pytest
 
 from kickrender.circuit import Pulse
-from kickrender.errors import InputError
 from kickrender.pack.design import points
-from kickrender.pack.plan import plan_pack
-from kickrender.pack.read import read_pack_text
-from kickrender.pack.records import Plan
 from kickrender.pack.steps import velocities
+from tests.pack.plans import faults_of, plan_of
 from tests.pack.texts import PACK
 
 DRAWN = (
@@ -22,16 +19,6 @@ LAYERED = PACK.replace('accent = { from = "1V", to = "5V", steps = 3 }', "").rep
 ).replace("{tone}/{accent}", "{tone}/{layer}-{take}") + (
     '[layers]\naccent = ["1V", "3V", "5V"]\n[takes]\ncount = 2\nseed = 1\nspread = { R1 = "5%" }\n'
 )  # fmt: skip
-
-
-def plan_of(text: str, folder: Path) -> Plan:
-    return plan_pack(read_pack_text(text, "p.toml", folder))
-
-
-def faults_of(text: str, folder: Path) -> list[str]:
-    with pytest.raises(InputError) as caught:
-        plan_of(text, folder)
-    return [str(fault) for fault in caught.value.faults]
 
 
 def test_a_zip_walks_its_lists_together(folder: Path) -> None:

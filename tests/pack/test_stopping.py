@@ -19,25 +19,8 @@ from kickrender.pack.plan import plan_pack
 from kickrender.pack.read import read_pack
 from kickrender.pack.render import Outcome, Stop
 from kickrender.pack.workers import run_batches
-from kickrender.sound.sound_file import pcm_digest_of_file
 from tests.pack.folders import contents
-
-
-def start(pack: Path, out: Path, *options: str) -> subprocess.Popen[str]:
-    command = [sys.executable, "-m", "kickrender", "pack", str(pack), "--out", str(out), *options]
-    return subprocess.Popen(command, stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True, start_new_session=True)
-
-
-def wait_for_files(out: Path, run: subprocess.Popen[str], count: int = 5) -> None:
-    while run.poll() is None and sum(1 for _ in out.rglob("*.wav")) < count:
-        time.sleep(0.005)
-
-
-def assert_whole(out: Path) -> None:
-    for path in out.rglob("*.wav"):
-        assert pcm_digest_of_file(path), path
-    for path in out.rglob("*.json"):
-        json.loads(path.read_bytes())
+from tests.pack.running import assert_stopped, assert_whole, start, wait_for_files
 
 
 def assert_a_rerun_finishes(pack: Path, out: Path) -> None:
@@ -57,14 +40,7 @@ def test_ctrl_c_leaves_whole_files_and_a_rerun_finishes(jobs: str, many: Path) -
     run = start(many, out, "--jobs", jobs)
     wait_for_files(out, run)
     os.killpg(run.pid, signal.SIGINT)  # as a terminal does it: to the workers too
-    _, complaint = run.communicate(timeout=60)
-    assert run.returncode == 130
-    assert complaint.splitlines()[-1] == "kickrender: stopped; every file that was written is whole"
-    assert "Traceback" not in complaint
-    assert not (out / "pack.json").exists()
-    assert not list(out.rglob("*.part"))
-    assert 5 <= sum(1 for _ in out.rglob("*.wav")) < 300
-    assert_whole(out)
+    assert_stopped(run, out)
     assert_a_rerun_finishes(many, out)
 
 

@@ -10,42 +10,11 @@ import soundfile
 
 from kickrender.errors import InputError
 from kickrender.pack import tuning
-from kickrender.pack.plan import plan_pack
-from kickrender.pack.read import read_pack_text
-from kickrender.pack.records import Plan
 from kickrender.pack.run import render_plan
 from tests.pack.folders import contents, hit_files, validate
+from tests.pack.plans import plan_of
+from tests.tunable_bell import BELL
 
-# A series resonance, f = 1/(2 pi sqrt(L C)), struck by a level that does not move its pitch.
-BELL = """
-title = "Bell"
-[inputs.gate]
-pulse = { rest = "0V", strike = "1V", length = "1ms" }
-[parts]
-R1 = { kind = "resistor", value = "40", between = ["gate", "a"] }
-L1 = { kind = "inductor", value = "1", between = ["a", "out"] }
-C1 = { kind = "capacitor", value = "5u", between = ["out", "ground"] }
-[controls.tune]
-sets = "C1"
-from = "10u"
-to = "1u"
-law = "geometric"
-[controls.damp]
-sets = "R1"
-from = "100"
-to = "10"
-law = "geometric"
-[controls.force]
-drives = "gate"
-from = "0.1V"
-to = "1V"
-start = "1V"
-[goals]
-pitch = "tune"
-decay = "damp"
-[output]
-net = "out"
-"""
 PACK = """
 title = "By ear"
 circuit = "bell.toml"
@@ -75,10 +44,6 @@ def bells(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> Path:
     (tmp_path / "bell.toml").write_text(BELL)
     monkeypatch.setattr(tuning, "cache_folder", lambda path: tmp_path / "cache")
     return tmp_path
-
-
-def plan_of(text: str, folder: Path) -> Plan:
-    return plan_pack(read_pack_text(text, "p.toml", folder))
 
 
 def facts_of(folder: Path, name: str) -> dict[str, Any]:

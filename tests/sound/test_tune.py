@@ -17,32 +17,8 @@ from kickrender.sound.options import SoundOptions
 from kickrender.sound.render import Take, hear_each
 from kickrender.sound.tune import Wish, tune_each
 from kickrender.sound.warm_up import warm_up
+from tests.tunable_bell import BELL
 
-# A series resonance: f = sqrt(1/(L C) - (R/(2 L))^2)/(2 pi), amplitude e^(-R t/(2 L)).
-BELL = """
-title = "Bell"
-[inputs.gate]
-pulse = { rest = "0V", strike = "1V", length = "1ms" }
-[parts]
-R1 = { kind = "resistor", value = "50", between = ["gate", "a"] }
-L1 = { kind = "inductor", value = "1", between = ["a", "out"] }
-C1 = { kind = "capacitor", value = "5u", between = ["out", "ground"] }
-[controls.tune]
-sets = "C1"
-from = "10u"
-to = "1u"
-law = "geometric"
-[controls.damp]
-sets = "R1"
-from = "100"
-to = "10"
-law = "geometric"
-[goals]
-pitch = "tune"
-decay = "damp"
-[output]
-net = "out"
-"""
 OPTIONS = SoundOptions(oversample=1)
 
 
@@ -112,8 +88,9 @@ def test_settings_far_from_the_circuits_own_are_met(bell: Circuit) -> None:
 
 def test_a_circuit_that_is_silent_by_itself_is_surveyed_as_it_is_set() -> None:
     """Its own starts give nothing to measure: only a second survey, under the wish's settings, finds a start."""
-    force = '[controls.force]\ndrives = "gate"\nfrom = "0V"\nto = "1V"\nstart = "0V"\n[goals]'
-    circuit = read_circuit_text(BELL.replace("[goals]", force), "bell.toml")
+    silent = BELL.replace('from = "0.1V"', 'from = "0V"').replace('start = "1V"', 'start = "0V"')
+    circuit = read_circuit_text(silent, "bell.toml")
+    assert circuit.controls["force"].start == 0.0
     assert_met([wish(circuit, {"force": "1V"}, pitch=("notes", "C2"))])
 
 
