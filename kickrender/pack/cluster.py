@@ -9,6 +9,7 @@ from __future__ import annotations
 
 import asyncio
 import logging
+import math
 import re
 import socket
 import time
@@ -36,6 +37,7 @@ class Cluster:
         self._client, self._address = client, address
         self.version = version()
         self.count = 0  # worker processes
+        self._counted_at = -math.inf
         self.uncompiled = 0  # of these, how many will compile the solver before their first hit
 
     def run(self, batches: Iterable[Job], work: Work[Job, Out], progress: Progress) -> Iterator[Out]:
@@ -51,7 +53,7 @@ class Cluster:
         waiting: set[Any] = set()
         try:
             while True:
-                room = _QUEUED_PER_WORKER * max(1, self.count) - len(waiting)
+                room = _QUEUED_PER_WORKER * max(1, self._counted()) - len(waiting)
                 for batch in (batch for _, batch in zip(range(room), queue, strict=False)):
                     waiting.add(self._client.submit(do_batch, work, batch, self.version, pure=False))
                 if not waiting:
@@ -100,11 +102,18 @@ class Cluster:
                 done: set[Any] = self._ask(distributed.wait, waiting, COUNT_EVERY_S, "FIRST_COMPLETED").done
                 return done
             except TimeoutError:
-                self.count = len(self._ask(self._client.nthreads))
-            if self.count:
+                pass
+            if self._counted():
                 seen = time.monotonic()
             elif time.monotonic() - seen > ALONE_S:
                 raise WorkerError(f"cluster {self._address}: every worker is gone{_AGAIN}")
+
+    def _counted(self) -> int:
+        """How many workers there are by now; some may have joined, or be gone."""
+        if time.monotonic() - self._counted_at >= COUNT_EVERY_S:
+            self.count = len(self._ask(self._client.nthreads))
+            self._counted_at = time.monotonic()
+        return self.count
 
     def _outcomes(self, future: Any) -> list[Any]:
         import distributed

@@ -147,9 +147,12 @@ def test_goals_layers_and_large_groups_are_as_at_home(
     told: list[int] = []
     with connect(two.address) as cluster:
         render_plan(by_ear, folder / "there", progress=told.append, cluster=cluster)
+        monkeypatch.setattr(cluster_module, "COUNT_EVERY_S", 0.05)
+        cluster.count = 1  # as if the other had only just joined
         monkeypatch.setattr(batches, "MOST_HITS", 2)  # groups of three: measured first
         monkeypatch.setattr(batches, "FEWEST_HITS", 1)
         render_plan(plain, folder / "plain-there", cluster=cluster)
+        assert cluster.count == 2
     monkeypatch.undo()
     render_plan(by_ear, folder / "here")
     render_plan(plain, folder / "plain-here")
