@@ -11,6 +11,7 @@ import pytest
 
 from kickrender.circuit import read_circuit_text
 from kickrender.engine import solve
+from tests.engine.circuits import residual_db
 from tests.outside.second_writing import SecondWriting
 
 STRIKE = '[inputs.gate]\npulse = { rest = "0V", strike = "5V", length = "4ms", rise = "20us", fall = "20us" }\n'
@@ -96,5 +97,4 @@ def test_solution_against_ida(parts: str) -> None:
     found = solution.sample(48_000, len(times), first=1)
     assert np.ptp(truth) > 0.2
     assert solution.rest["out"] == pytest.approx(rest, abs=1e-7)
-    residual_db = 20.0 * np.log10(np.sqrt(np.mean((found - truth) ** 2)) / np.max(np.abs(truth)))
-    assert residual_db < -100.0
+    assert residual_db(found, truth) < -100.0

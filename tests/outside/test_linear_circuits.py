@@ -7,7 +7,7 @@ import pytest
 from scipy import signal
 
 from kickrender.engine import poles, solve
-from tests.engine.circuits import circuit, rc
+from tests.engine.circuits import circuit, rc, residual_db
 
 RATE_HZ = 96_000.0
 DEFAULT_DB, TIGHT_DB = -100.0, -170.0
@@ -21,10 +21,6 @@ def times(count: int) -> np.ndarray:
 def ramp_response(step_response, t: np.ndarray, rise: float) -> np.ndarray:
     """Answer to a ramp from 0 to 1 over `rise`, from the integral of the step response: (S(t) - S(t - rise))/rise."""
     return (step_response(np.maximum(t, 0.0)) - step_response(np.maximum(t - rise, 0.0))) / rise
-
-
-def residual_db(found: np.ndarray, true: np.ndarray) -> float:
-    return float(20 * np.log10(np.sqrt(np.mean((found - true) ** 2)) / np.max(np.abs(true))))
 
 
 def solved(chosen, count: int, tolerance: float | None) -> np.ndarray:
