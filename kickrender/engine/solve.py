@@ -28,7 +28,7 @@ from kickrender.errors import SolveError
 
 ENGINE_VERSION = "2"  # moves whenever a render's bytes may move
 
-DEFAULT_TOLERANCE = 8e-7  # error of one step, relative to a voltage
+DEFAULT_TOLERANCE = 2e-6  # error of one step, relative to a voltage
 ABSOLUTE_SHARE = 0.3  # volts (or amperes) below which the tolerance no longer shrinks with the value
 SIDE_BY_SIDE = (0,) * 8  # lanes
 _BATCH = 64  # hits prepared at once: bounds memory

@@ -34,7 +34,7 @@ _ORDER = RODAS5P.order
 # step control; err is a root mean square of the error estimate in units of the tolerance, over no more unknowns than
 # move at once in a voice: those at rest must not make the others' tolerance looser
 _MOVING = 8
-_SAFETY = 0.9
+_SAFETY = 0.75
 _LEAST_FACTOR, _MOST_FACTOR = 0.2, 6.0
 _FIRST_STEP_S = 1e-6  # after a break point, where x' jumps; never more than a thousandth of the way to the next
 _LEAST_STEP_S = 1e-15
@@ -392,6 +392,8 @@ def solve(
                 grow = factor[lane]
                 if last_step[lane] > 0.0:
                     grow = min(grow, step[lane] / last_step[lane] * grow * grow / last_factor[lane])
+                    if grow < _MOST_FACTOR:
+                        grow = min(grow, np.sqrt(np.sqrt(grow)))  # larger steps are tried little by little
                 grow = min(max(grow, _LEAST_FACTOR), _MOST_FACTOR)
                 last_step[lane] = step[lane]
                 last_factor[lane] = factor[lane]
