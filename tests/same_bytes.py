@@ -22,9 +22,9 @@ HARD = ("drive", "accent", "brightness")  # controls that tell a hard hit from a
 
 
 def walked() -> dict[str, tuple[float, float]]:
-    """Two controls that all shipped circuits have, and a soft and a hard value of each that suits them all."""
+    """A control that all shipped circuits have, and a soft and a hard value of it that suits them all."""
     controls = [read_circuit(circuit).controls for circuit in shipped_circuits()]
-    shared = [name for name in (*HARD, *controls[0]) if all(name in each for each in controls)][:2]
+    shared = [name for name in (*HARD, *controls[0]) if all(name in each for each in controls)][:1]
     found = {}
     for name in shared:
         low, high = max(each[name].low for each in controls), min(each[name].high for each in controls)
