@@ -22,7 +22,7 @@ from typing import Any
 TOP = Path(__file__).resolve().parent.parent
 HIT_S = 0.5
 LOOK_EVERY_S = 0.05
-STAGES = ("solve", "decimate", "measure", "level and finish", "write", "manifest", "sheets")
+STAGES = ("solve", "decimate", "measure", "level and finish", "write", "duplicates", "manifest", "sheets")
 
 
 @dataclass(frozen=True)
@@ -177,6 +177,7 @@ def _clocks() -> dict[str, float]:
     watch(pack_render, "gain_of", "level and finish")
     watch(pack_render, "finish", "level and finish")
     watch(pack_render, "write_hit", "write")
+    watch(pack_run, "near_duplicates", "duplicates")
     watch(pack_run, "write_manifest", "manifest")
     watch(pack_run, "write_sheets", "sheets")
     return spent

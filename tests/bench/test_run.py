@@ -165,7 +165,7 @@ def test_pack_tables():
         ["some", "10", "1", "2.00", "5.0", "itself", "100", "120"],
         ["more", "10", "2", "1.00", "10.0", "90", "80", "95"],
     ]
-    assert table_cells(tables.stage_table(run))[-2] == ["all else", "130", "65 %"]
+    assert table_cells(tables.stage_table(run))[-2] == ["all else", "120", "60 %"]
     assert "steps = 5" in hits_text("bridged-t", 50)
     assert "steps = 10" in hits_text("bridged-t", 50)
 
